@@ -80,7 +80,7 @@ impl Reader {
             return ItemKind::Opaque;
         }
         match content.chars().next() {
-            Some('*') if content.starts_with("*~") => ItemKind::Mark,
+            Some('*') if is_mark(content) => ItemKind::Mark,
             Some('*') => ItemKind::Comment,
             Some('.') => {
                 self.ended = is(&[".end"]);
@@ -152,4 +152,10 @@ impl Reader {
         let range = TextRange::new(start, start + length);
         self.errors.push(fault(kind, range));
     }
+}
+
+/// A line of signs only (`*~~~~`) is a divider, not a mark.
+fn is_mark(content: &str) -> bool {
+    content.starts_with("*~+")
+        || (content.starts_with("*~") && content.contains(|c: char| c.is_alphanumeric()))
 }

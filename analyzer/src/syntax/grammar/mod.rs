@@ -31,6 +31,8 @@ pub struct Parse {
     pub statements: Vec<Statement>,
     /// All faults in order of the text.
     pub errors: Vec<SyntaxError>,
+    /// Faults of marks; the cards are not touched by them.
+    pub mark_errors: Vec<SyntaxError>,
     /// The title line read as a card, when it looks like one.
     pub title_card: Option<TextRange>,
 }
@@ -38,9 +40,15 @@ pub struct Parse {
 /// Parses a file. Always returns a tree; what could not be read is in `errors`.
 pub fn parse(text: Arc<str>, role: FileRole) -> Parse {
     let (tree, mut errors) = lines::read_lines(text, role);
+    let mut mark_errors = Vec::new();
     let mut statements = Vec::with_capacity(tree.items().len());
     for (index, item) in tree.items().iter().enumerate() {
-        let kind = match read_item(&tree, item, &mut errors) {
+        let place = if item.kind == ItemKind::Mark {
+            &mut mark_errors
+        } else {
+            &mut errors
+        };
+        let kind = match read_item(&tree, item, place) {
             Some(kind) => kind,
             None => continue,
         };
@@ -57,6 +65,7 @@ pub fn parse(text: Arc<str>, role: FileRole) -> Parse {
         tree,
         statements,
         errors,
+        mark_errors,
         title_card,
     }
 }
