@@ -1,0 +1,16 @@
+//! The only facade of the analyzer: texts in, findings and block reports out. Holds no paths
+//! and does no I/O; includes that are not known are asked for by number and spelling.
+
+mod prepared;
+mod report;
+mod source;
+
+pub use prepared::{Prepared, Screening};
+pub use report::{
+    BlockReport, DeterminantReport, DrivingPointReport, ModeReport, Share, Sight, TwoPortReport,
+    Verdict,
+};
+pub use source::{Host, SourceText};
+
+pub use crate::elaborate::{Include, IncludeRequest};
+pub use crate::syntax::FileRole;

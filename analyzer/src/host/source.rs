@@ -1,0 +1,148 @@
+//! The texts the host knows, parsed, and the answers to their includes.
+
+use super::prepared::Prepared;
+use crate::config::Config;
+use crate::elaborate::{FileStore, Include, gather};
+use crate::syntax::{FileRole, Parse, parse};
+use crate::text::{FileId, LineIndex};
+use std::collections::HashMap;
+use std::sync::{Arc, OnceLock};
+use std::time::Duration;
+
+/// A text as the server read it.
+#[derive(Clone, Debug)]
+pub struct SourceText {
+    /// The text; bytes that are not UTF-8 have become one replacement sign each.
+    pub text: Arc<str>,
+    /// Offset in `text` of the first byte that was not UTF-8.
+    pub not_utf8_at: Option<u32>,
+}
+
+impl SourceText {
+    /// A text that is sound UTF-8.
+    pub fn new(text: impl Into<Arc<str>>) -> Self {
+        Self {
+            text: text.into(),
+            not_utf8_at: None,
+        }
+    }
+
+    /// Decodes bytes; each byte that is not UTF-8 becomes U+FFFD and its place is kept.
+    pub fn from_bytes(bytes: &[u8]) -> Self {
+        match std::str::from_utf8(bytes) {
+            Ok(text) => Self::new(text),
+            Err(error) => Self {
+                text: String::from_utf8_lossy(bytes).into(),
+                not_utf8_at: Some(error.valid_up_to() as u32),
+            },
+        }
+    }
+}
+
+/// One file.
+#[derive(Clone, Debug)]
+pub(super) struct SourceFile {
+    pub(super) source: SourceText,
+    pub(super) role: FileRole,
+    pub(super) parse: Arc<Parse>,
+    lines: Arc<OnceLock<LineIndex>>,
+}
+
+/// Texts by number; cheap to clone, so that a worker can keep what it started from.
+#[derive(Clone, Debug)]
+pub struct Host {
+    pub(super) files: Vec<SourceFile>,
+    includes: HashMap<(FileId, String), Include>,
+    pub(super) now: fn() -> Duration,
+    /// The settings in force.
+    pub config: Arc<Config>,
+}
+
+impl Host {
+    /// An empty host. `now` is a monotonic clock; it only stamps results.
+    pub fn new(now: fn() -> Duration) -> Self {
+        Self {
+            files: Vec::new(),
+            includes: HashMap::new(),
+            now,
+            config: Arc::new(Config::default()),
+        }
+    }
+
+    /// Adds a file.
+    pub fn add_file(&mut self, source: SourceText, role: FileRole) -> FileId {
+        let id = FileId(self.files.len() as u32);
+        self.files.push(SourceFile::new(source, role));
+        id
+    }
+
+    /// Gives a file a new text. Nothing happens when the text is the same.
+    pub fn set_text(&mut self, file: FileId, source: SourceText) {
+        if let Some(slot) = self.files.get_mut(file.0 as usize) {
+            if slot.source.text != source.text {
+                *slot = SourceFile::new(source, slot.role);
+            }
+        }
+    }
+
+    /// Answers an include that `prepare` asked for.
+    pub fn set_include(&mut self, from: FileId, path: &str, answer: Include) {
+        self.includes.insert((from, path.to_owned()), answer);
+    }
+
+    /// Forgets all answers to includes, so that they are asked for again.
+    pub fn forget_includes(&mut self) {
+        self.includes.clear();
+    }
+
+    /// A file's text.
+    pub fn text(&self, file: FileId) -> Arc<str> {
+        self.files
+            .get(file.0 as usize)
+            .map_or_else(|| Arc::from(""), |f| Arc::clone(&f.source.text))
+    }
+
+    /// A file's lines.
+    pub fn lines(&self, file: FileId) -> Option<&LineIndex> {
+        self.files.get(file.0 as usize).map(SourceFile::lines)
+    }
+
+    /// Reads a netlist with its includes and checks its text. When the answer asks for includes,
+    /// supply them and prepare again.
+    pub fn prepare(&self, root: FileId) -> Prepared {
+        let limits = &self.config.limits;
+        let program = gather(self, root, limits.nesting, limits.parts.saturating_mul(4));
+        Prepared::new(self, root, program)
+    }
+}
+
+impl SourceFile {
+    fn new(source: SourceText, role: FileRole) -> Self {
+        let parse = Arc::new(parse(Arc::clone(&source.text), role));
+        Self {
+            source,
+            role,
+            parse,
+            lines: Arc::new(OnceLock::new()),
+        }
+    }
+
+    fn lines(&self) -> &LineIndex {
+        self.lines.get_or_init(|| LineIndex::new(&self.source.text))
+    }
+}
+
+impl FileStore for Host {
+    fn file(&self, file: FileId) -> Option<Arc<Parse>> {
+        self.files
+            .get(file.0 as usize)
+            .map(|f| Arc::clone(&f.parse))
+    }
+
+    fn include(&self, from: FileId, path: &str) -> Include {
+        self.includes
+            .get(&(from, path.to_owned()))
+            .cloned()
+            .unwrap_or(Include::Unknown)
+    }
+}
