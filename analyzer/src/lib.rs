@@ -9,6 +9,7 @@ pub mod config;
 pub mod elaborate;
 pub mod finding;
 pub mod host;
+pub mod rules;
 pub mod syntax;
 pub mod text;
 pub mod units;

@@ -6,6 +6,7 @@ use super::source::Host;
 use crate::cancel::{Cancel, Cancelled};
 use crate::elaborate::{Elaborated, IncludeRequest, Limits, Program, elaborate_blocks};
 use crate::finding::Finding;
+use crate::rules::{TextContext, text_findings};
 use crate::text::FileId;
 use std::sync::Arc;
 
@@ -35,12 +36,25 @@ impl Prepared {
             nesting: host.config.limits.nesting,
         };
         let elaborated = elaborate_blocks(&program, limits);
+        let not_utf8: Vec<(FileId, u32)> = program
+            .files
+            .keys()
+            .filter_map(|file| Some((*file, host.not_utf8_at(*file)?)))
+            .collect();
+        let context = TextContext {
+            program: &program,
+            elaborated: &elaborated,
+            config: &host.config,
+            not_utf8: &not_utf8,
+        };
+        let mut findings = text_findings(&context);
+        sort_findings(&mut findings);
         Self {
             host: Arc::new(host.clone()),
             root,
             program: Arc::new(program),
             elaborated: Arc::new(elaborated),
-            findings: Arc::new(Vec::new()),
+            findings: Arc::new(findings),
         }
     }
 
@@ -86,4 +100,18 @@ impl Prepared {
             blocks: Vec::new(),
         })
     }
+}
+
+/// By file, place and rule; what is told twice is told once.
+pub(super) fn sort_findings(findings: &mut Vec<Finding>) {
+    findings.sort_by(|a, b| {
+        let key = |f: &Finding| (f.span.file, f.span.range, f.rule);
+        key(a)
+            .cmp(&key(b))
+            .then_with(|| a.block.cmp(&b.block))
+            .then_with(|| a.message.cmp(&b.message))
+    });
+    findings.dedup_by(|a, b| {
+        a.span == b.span && a.rule == b.rule && a.block == b.block && a.message == b.message
+    });
 }

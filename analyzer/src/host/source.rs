@@ -107,6 +107,11 @@ impl Host {
         self.files.get(file.0 as usize).map(SourceFile::lines)
     }
 
+    /// Offset of the first byte of a file that is not UTF-8.
+    pub(super) fn not_utf8_at(&self, file: FileId) -> Option<u32> {
+        self.files.get(file.0 as usize)?.source.not_utf8_at
+    }
+
     /// Reads a netlist with its includes and checks its text. When the answer asks for includes,
     /// supply them and prepare again.
     pub fn prepare(&self, root: FileId) -> Prepared {

@@ -1,0 +1,89 @@
+//! What a rule may look at, read-only, and the helpers that rules share.
+
+use crate::circuit::{NodeId, PartId};
+use crate::config::Config;
+use crate::elaborate::{BlockCircuit, Elaborated, Issue, Origin, Program};
+use crate::finding::{Finding, Severity};
+use crate::rules::Rule;
+use crate::text::{FileId, Span};
+
+/// Facts of the text and of the elaborated netlist.
+pub struct TextContext<'a> {
+    /// Statements by scope.
+    pub program: &'a Program,
+    /// Flat top level, blocks, and faults of meaning.
+    pub elaborated: &'a Elaborated,
+    /// Settings.
+    pub config: &'a Config,
+    /// Files with bytes that are not UTF-8, and where the first one stands.
+    pub not_utf8: &'a [(FileId, u32)],
+}
+
+impl TextContext<'_> {
+    /// The text under a span.
+    pub fn text(&self, span: Span) -> &str {
+        self.program.text(span.file, span.range)
+    }
+
+    /// The faults of meaning for which `pick` has words, as findings of `rule`.
+    pub fn issues(
+        &self,
+        rule: &'static Rule,
+        out: &mut Vec<Finding>,
+        pick: impl Fn(&Issue) -> Option<String>,
+    ) {
+        for issue in &self.elaborated.issues {
+            if let Some(message) = pick(issue) {
+                out.push(rule.finding(issue.span, message));
+            }
+        }
+    }
+}
+
+/// Facts of one block and its screen.
+pub struct BlockContext<'a> {
+    /// The netlist around it.
+    pub text: &'a TextContext<'a>,
+    /// The block's circuit.
+    pub block: &'a BlockCircuit,
+}
+
+impl BlockContext<'_> {
+    /// The place of a part: its name on the card that writes it.
+    pub fn part_span(&self, part: PartId) -> Option<Span> {
+        self.block.map.part(part).map(Origin::span)
+    }
+
+    /// Where a node is first named.
+    pub fn node_span(&self, node: NodeId) -> Option<Span> {
+        self.block.map.node(node)
+    }
+
+    /// A finding of `rule` in this block.
+    pub fn finding(&self, rule: &'static Rule, span: Span, message: String) -> Finding {
+        let mut finding = rule.finding(span, message);
+        finding.block = Some(self.block.name.clone());
+        finding
+    }
+
+    /// A finding of `rule` in this block with another severity than the rule's own.
+    pub fn finding_as(
+        &self,
+        rule: &'static Rule,
+        severity: Severity,
+        span: Span,
+        message: String,
+    ) -> Finding {
+        let mut finding = self.finding(rule, span, message);
+        finding.severity = severity;
+        finding
+    }
+}
+
+/// `; nearest is ..` behind a message, when a name is near.
+pub fn did_you_mean(nearest: &Option<String>) -> String {
+    match nearest {
+        Some(name) => format!("; the nearest name is `{name}`"),
+        None => String::new(),
+    }
+}

@@ -1,0 +1,16 @@
+//! The rules: each turns a fact of the text, of the circuit or of a screen into findings.
+//! One rule a file, its explanation beside it.
+
+mod context;
+mod coverage;
+mod names;
+mod registry;
+mod stability;
+mod syntax;
+#[cfg(test)]
+pub(crate) mod testing;
+mod values;
+mod wiring;
+
+pub use context::{BlockContext, TextContext};
+pub use registry::{Family, Rule, find_rule, rules, screen_findings, text_findings};

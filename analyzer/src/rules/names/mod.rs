@@ -1,0 +1,8 @@
+//! Names that lead nowhere, or to two things.
+
+mod unknown_subcircuit;
+
+use super::Rule;
+
+/// The family, names in order.
+pub(super) static RULES: &[&Rule] = &[&unknown_subcircuit::RULE];

@@ -1,0 +1,6 @@
+//! What the screen found.
+
+use super::Rule;
+
+/// The family, names in order.
+pub(super) static RULES: &[&Rule] = &[];

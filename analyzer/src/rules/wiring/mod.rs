@@ -1,0 +1,6 @@
+//! How parts are connected.
+
+use super::Rule;
+
+/// The family, names in order.
+pub(super) static RULES: &[&Rule] = &[];
