@@ -1,0 +1,26 @@
+//! What the numbers say about stability: natural modes, normalized determinant, driving-point
+//! conductance, two-port factors, and the verdict that combines them. Speaks of nodes and parts
+//! by number; knows no text.
+
+mod active;
+mod determinant;
+mod driving_point;
+mod modes;
+mod probe;
+mod screen;
+mod two_port;
+mod verdict;
+
+pub use active::{ActiveSet, active_sources, is_passive_set};
+pub use determinant::{Determinant, DeterminantFailure, count, normalized_determinant};
+pub use driving_point::{
+    Crossing, DrivingPoint, Probe, conductance_ranges, driving_point_admittance, driving_points,
+    startup_crossings,
+};
+pub use modes::{
+    AXIS_TOLERANCE, Mode, ModeFailure, Modes, Participation, natural_modes, participation,
+};
+pub use probe::{Solver, SolverFailure};
+pub use screen::{Doubt, LISTED_DAMPING, ListedMode, Screen, ScreenRequest, screen, solver_of};
+pub use two_port::{Factors, TwoPort, factors, scattering, two_port_factors};
+pub use verdict::{Sight, Verdict};
