@@ -1,0 +1,3 @@
+//! Tests of the whole: the suite of cases with known answers.
+
+mod suite;
