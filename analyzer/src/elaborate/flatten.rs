@@ -320,6 +320,8 @@ impl<'p> Flattener<'p> {
                 CardKind::Coupling { .. } | CardKind::CurrentControlled { .. } => {
                     late.push((*card_ref, position));
                 }
+                CardKind::Instance { subcircuit, .. }
+                    if self.is_undefined(work, instance, *card_ref, card, *subcircuit) => {}
                 _ => {
                     let nodes = self.nodes(work, &plan, instance, position);
                     let added = self.card(work, instance, *card_ref, card, &nodes, &mut used);
@@ -723,6 +725,39 @@ impl<'p> Flattener<'p> {
         }
     }
 
+    /// Reports an instance of a subcircuit that is not defined, unless a device mark stands in
+    /// for it. Such a card adds nothing, not even its nodes.
+    fn is_undefined(
+        &self,
+        work: &mut Work,
+        instance: &Instance,
+        card_ref: CardRef,
+        card: &Card,
+        subcircuit: Word,
+    ) -> bool {
+        let program = self.program;
+        let own = program
+            .text(card_ref.file, card.name.range)
+            .to_ascii_lowercase();
+        let name = program.text(card_ref.file, subcircuit.range);
+        let known = program.find_subcircuit(instance.scope, &Folded::new(name));
+        if known.is_some() || instance.marks.iter().any(|(target, _)| *target == own) {
+            return false;
+        }
+        let known: Vec<&str> = program
+            .outward(instance.scope)
+            .flat_map(|scope| scope.subcircuits.keys().map(Folded::as_str))
+            .collect();
+        let kind = IssueKind::UnknownSubcircuit {
+            name: name.to_owned(),
+            nearest: nearest(name, known).map(str::to_owned),
+        };
+        work.issue(kind, Span::new(card_ref.file, subcircuit.range), None);
+        let reason = format!("the subcircuit `{name}` is not defined");
+        self.gap(work, card_ref, card, &reason);
+        true
+    }
+
     fn enter(
         &mut self,
         work: &mut Work,
@@ -737,17 +772,6 @@ impl<'p> Flattener<'p> {
         let name = program.text(card_ref.file, subcircuit.range);
         let span = Span::new(card_ref.file, subcircuit.range);
         let Some(target) = program.find_subcircuit(instance.scope, &Folded::new(name)) else {
-            let known: Vec<&str> = program
-                .outward(instance.scope)
-                .flat_map(|scope| scope.subcircuits.keys().map(Folded::as_str))
-                .collect();
-            let kind = IssueKind::UnknownSubcircuit {
-                name: name.to_owned(),
-                nearest: nearest(name, known).map(str::to_owned),
-            };
-            work.issue(kind, span, None);
-            let reason = format!("an instance of `{name}`, which is not defined");
-            self.add_not_computed(work, instance, card_ref, card, nodes, reason);
             return;
         };
         if work.stack.contains(&target) {

@@ -1,9 +1,13 @@
 //! The only facade of the analyzer: texts in, findings and block reports out. Holds no paths
 //! and does no I/O; includes that are not known are asked for by number and spelling.
 
+mod accepted;
+mod fingerprint;
 mod prepared;
 mod report;
+mod screening;
 mod source;
+mod trace;
 
 pub use prepared::{Prepared, Screening};
 pub use report::{
@@ -11,6 +15,7 @@ pub use report::{
     Verdict,
 };
 pub use source::{Host, SourceText};
+pub use trace::{TraceError, TraceTable};
 
 pub use crate::elaborate::{Include, IncludeRequest};
 pub use crate::syntax::FileRole;

@@ -1,9 +1,10 @@
 //! A netlist ready to be screened: everything that needs no numerics is done, and the rest can
 //! run on another thread.
 
+use super::accepted::{accept, unused};
+use super::fingerprint::fingerprint;
 use super::report::BlockReport;
 use super::source::Host;
-use crate::cancel::{Cancel, Cancelled};
 use crate::elaborate::{Elaborated, IncludeRequest, Limits, Program, elaborate_blocks};
 use crate::finding::Finding;
 use crate::rules::{TextContext, text_findings};
@@ -17,6 +18,7 @@ pub struct Prepared {
     pub(super) root: FileId,
     pub(super) program: Arc<Program>,
     pub(super) elaborated: Arc<Elaborated>,
+    raw: Arc<Vec<Finding>>,
     findings: Arc<Vec<Finding>>,
 }
 
@@ -36,25 +38,34 @@ impl Prepared {
             nesting: host.config.limits.nesting,
         };
         let elaborated = elaborate_blocks(&program, limits);
-        let not_utf8: Vec<(FileId, u32)> = program
-            .files
-            .keys()
-            .filter_map(|file| Some((*file, host.not_utf8_at(*file)?)))
-            .collect();
-        let context = TextContext {
-            program: &program,
-            elaborated: &elaborated,
-            config: &host.config,
-            not_utf8: &not_utf8,
-        };
-        let mut findings = text_findings(&context);
-        sort_findings(&mut findings);
-        Self {
+        let mut prepared = Self {
             host: Arc::new(host.clone()),
             root,
             program: Arc::new(program),
             elaborated: Arc::new(elaborated),
-            findings: Arc::new(findings),
+            raw: Arc::default(),
+            findings: Arc::default(),
+        };
+        let not_utf8: Vec<(FileId, u32)> = prepared
+            .program
+            .files
+            .keys()
+            .filter_map(|file| Some((*file, host.not_utf8_at(*file)?)))
+            .collect();
+        let raw = text_findings(&prepared.text_context(&not_utf8));
+        let mut findings = raw.clone();
+        prepared.raw = Arc::new(raw);
+        finish(&prepared, &mut findings, !prepared.has_blocks());
+        prepared.findings = Arc::new(findings);
+        prepared
+    }
+
+    pub(super) fn text_context<'a>(&'a self, not_utf8: &'a [(FileId, u32)]) -> TextContext<'a> {
+        TextContext {
+            program: &self.program,
+            elaborated: &self.elaborated,
+            config: &self.host.config,
+            not_utf8,
         }
     }
 
@@ -84,26 +95,25 @@ impl Prepared {
         &self.findings
     }
 
+    /// Findings of the text before any was accepted.
+    pub(super) fn raw_findings(&self) -> &[Finding] {
+        &self.raw
+    }
+
     /// Whether any block is marked.
     pub fn has_blocks(&self) -> bool {
         !self.elaborated.blocks.is_empty()
     }
-
-    /// Screens all blocks.
-    ///
-    /// # Errors
-    /// [`Cancelled`] when the flag was set before the end.
-    pub fn screen(&self, cancel: &Cancel) -> Result<Screening, Cancelled> {
-        cancel.check()?;
-        Ok(Screening {
-            findings: self.findings.to_vec(),
-            blocks: Vec::new(),
-        })
-    }
 }
 
-/// By file, place and rule; what is told twice is told once.
-pub(super) fn sort_findings(findings: &mut Vec<Finding>) {
+/// Takes accepted findings out, adds fingerprints, and sorts by file, place and rule; what is
+/// told twice is told once. `complete`: no more findings will come, so that `quiet` marks that
+/// match nothing can be told.
+pub(super) fn finish(prepared: &Prepared, findings: &mut Vec<Finding>, complete: bool) {
+    let used = accept(prepared, findings);
+    if complete {
+        findings.extend(unused(prepared, &used));
+    }
     findings.sort_by(|a, b| {
         let key = |f: &Finding| (f.span.file, f.span.range, f.rule);
         key(a)
@@ -114,4 +124,7 @@ pub(super) fn sort_findings(findings: &mut Vec<Finding>) {
     findings.dedup_by(|a, b| {
         a.span == b.span && a.rule == b.rule && a.block == b.block && a.message == b.message
     });
+    for finding in findings {
+        finding.fingerprint = fingerprint(&prepared.program, finding);
+    }
 }

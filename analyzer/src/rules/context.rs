@@ -1,10 +1,11 @@
 //! What a rule may look at, read-only, and the helpers that rules share.
 
-use crate::circuit::{NodeId, PartId};
+use crate::circuit::{NodeId, NodeRef, PartId};
 use crate::config::Config;
 use crate::elaborate::{BlockCircuit, Elaborated, Issue, Origin, Program};
 use crate::finding::{Finding, Severity};
 use crate::rules::Rule;
+use crate::stability::{Screen, Verdict};
 use crate::text::{FileId, Span};
 
 /// Facts of the text and of the elaborated netlist.
@@ -46,6 +47,12 @@ pub struct BlockContext<'a> {
     pub text: &'a TextContext<'a>,
     /// The block's circuit.
     pub block: &'a BlockCircuit,
+    /// What the screen found; `None` when a part cannot be computed.
+    pub screen: Option<&'a Screen>,
+    /// The verdict, gaps of the text taken into account.
+    pub verdict: Verdict,
+    /// Reasons and assumptions, in words.
+    pub why: Option<&'a str>,
 }
 
 impl BlockContext<'_> {
@@ -57,6 +64,16 @@ impl BlockContext<'_> {
     /// Where a node is first named.
     pub fn node_span(&self, node: NodeId) -> Option<Span> {
         self.block.map.node(node)
+    }
+
+    /// A part's full name.
+    pub fn part_name(&self, part: PartId) -> &str {
+        self.block.circuit.part(part).map_or("?", |part| &part.name)
+    }
+
+    /// A node's full name.
+    pub fn node_name(&self, node: NodeId) -> &str {
+        self.block.circuit.node_name(NodeRef::Node(node))
     }
 
     /// A finding of `rule` in this block.

@@ -11,7 +11,6 @@ use crate::circuit::{Circuit, NodeId, PartId, PartKind};
 use crate::linalg::eigen::finite_modes;
 use crate::linalg::error::NumericError;
 use crate::linalg::polish::{null_vectors, polish};
-use crate::linalg::values::Values;
 use num_complex::Complex64;
 
 /// One mode of each conjugate pair.
