@@ -20,6 +20,40 @@ pub struct DenseLu {
     columns: Vec<usize>,
     sign: f64,
     singular: bool,
+    /// Powers of two that multiplied the rows and columns before elimination.
+    row_scale: Vec<i32>,
+    column_scale: Vec<i32>,
+}
+
+/// Sweeps of the equilibration; each halves the spread in decades.
+const SWEEPS: usize = 8;
+
+/// Powers of two that bring the largest entry of every row and column near one
+/// (D. Ruiz, "A scaling algorithm to equilibrate both rows and columns norms in
+/// matrices", RAL-TR-2001-034; from memory).
+fn equilibrate(a: &mut DMatrix<Complex64>) -> (Vec<i32>, Vec<i32>) {
+    let n = a.nrows();
+    let (mut row, mut column) = (vec![0i32; n], vec![0i32; n]);
+    let half_exponent = |x: f64| {
+        if x > 0.0 {
+            (-x.log2() / 2.0).round() as i32
+        } else {
+            0
+        }
+    };
+    for _ in 0..SWEEPS {
+        for k in 0..n {
+            let e = half_exponent(a.row(k).iter().fold(0.0, |m, v| v.norm().max(m)));
+            a.row_mut(k).iter_mut().for_each(|v| *v *= 2f64.powi(e));
+            row[k] += e;
+        }
+        for k in 0..n {
+            let e = half_exponent(a.column(k).iter().fold(0.0, |m, v| v.norm().max(m)));
+            a.column_mut(k).iter_mut().for_each(|v| *v *= 2f64.powi(e));
+            column[k] += e;
+        }
+    }
+    (row, column)
 }
 
 impl DenseLu {
@@ -32,6 +66,8 @@ impl DenseLu {
     pub fn new(a: &DMatrix<Complex64>) -> Self {
         assert!(a.is_square(), "the oracle factors square matrices");
         let n = a.nrows();
+        let mut a = a.clone();
+        let (row_scale, column_scale) = equilibrate(&mut a);
         let lu = (0..n * n).map(|k| Wide::from(a[(k / n, k % n)])).collect();
         let mut this = Self {
             n,
@@ -40,6 +76,8 @@ impl DenseLu {
             columns: (0..n).collect(),
             sign: 1.0,
             singular: false,
+            row_scale,
+            column_scale,
         };
         for k in 0..n {
             this.step(k);
@@ -91,6 +129,8 @@ impl DenseLu {
         for k in 0..self.n {
             det = det.multiply(&ScaledDet::new(self.at(k, k).to_complex(), 0));
         }
+        let scale: i32 = self.row_scale.iter().chain(&self.column_scale).sum();
+        det.exponent -= i64::from(scale);
         det
     }
 
@@ -110,7 +150,11 @@ impl DenseLu {
         if self.singular {
             return None;
         }
-        let mut y: Vec<Wide> = self.rows.iter().map(|&row| Wide::from(b[row])).collect();
+        let mut y: Vec<Wide> = self
+            .rows
+            .iter()
+            .map(|&row| Wide::from(b[row] * 2f64.powi(self.row_scale[row])))
+            .collect();
         for i in 0..self.n {
             for j in 0..i {
                 y[i] = y[i].minus(self.at(i, j).times(y[j]));
@@ -124,7 +168,7 @@ impl DenseLu {
         }
         let mut x = DVector::from_element(self.n, Complex64::new(0.0, 0.0));
         for (k, &column) in self.columns.iter().enumerate() {
-            x[column] = y[k].to_complex();
+            x[column] = y[k].to_complex() * 2f64.powi(self.column_scale[column]);
         }
         Some(x)
     }
