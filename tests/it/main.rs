@@ -1,5 +1,7 @@
-//! Tests of the whole: the suite of cases with known answers.
+//! Tests of the whole: the suite of cases with known answers, the samples, and the built program
+//! as its users drive it.
 
+mod cli;
 mod load;
 mod samples;
 mod suite;

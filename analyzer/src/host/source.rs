@@ -2,10 +2,10 @@
 
 use super::prepared::Prepared;
 use crate::config::Config;
-use crate::elaborate::{FileStore, Include, gather};
+use crate::elaborate::{FileStore, Include, IncludeRequest, Program, gather};
 use crate::syntax::{FileRole, Parse, parse};
 use crate::text::{FileId, LineIndex};
-use std::collections::HashMap;
+use std::collections::{HashMap, HashSet};
 use std::sync::{Arc, OnceLock};
 use std::time::Duration;
 
@@ -85,6 +85,24 @@ impl Host {
         }
     }
 
+    /// Says whether a file has a title line. Nothing happens when that is known already.
+    pub fn set_role(&mut self, file: FileId, role: FileRole) {
+        if let Some(slot) = self.files.get_mut(file.0 as usize)
+            && slot.role != role
+        {
+            *slot = SourceFile::new(slot.source.clone(), role);
+        }
+    }
+
+    /// Includes reached from `root` that nobody has answered yet, each once, in the order of the
+    /// text. Costs far less than [`Host::prepare`], which also flattens and checks.
+    pub fn missing_includes(&self, root: FileId) -> Vec<IncludeRequest> {
+        let mut missing = self.gather(root).missing;
+        let mut seen = HashSet::new();
+        missing.retain(|request| seen.insert(request.clone()));
+        missing
+    }
+
     /// Answers an include that `prepare` asked for.
     pub fn set_include(&mut self, from: FileId, path: &str, answer: Include) {
         self.includes.insert((from, path.to_owned()), answer);
@@ -115,9 +133,12 @@ impl Host {
     /// Reads a netlist with its includes and checks its text. When the answer asks for includes,
     /// supply them and prepare again.
     pub fn prepare(&self, root: FileId) -> Prepared {
+        Prepared::new(self, root, self.gather(root))
+    }
+
+    fn gather(&self, root: FileId) -> Program {
         let limits = &self.config.limits;
-        let program = gather(self, root, limits.nesting, limits.parts.saturating_mul(4));
-        Prepared::new(self, root, program)
+        gather(self, root, limits.nesting, limits.parts.saturating_mul(4))
     }
 }
 
@@ -149,5 +170,37 @@ impl FileStore for Host {
             .get(&(from, path.to_owned()))
             .cloned()
             .unwrap_or(Include::Unknown)
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn includes_are_asked_for_once_and_until_answered() {
+        let mut host = Host::new(|| Duration::ZERO);
+        let text = "title\n.include 'b.inc'\n.include 'a.inc'\n.include 'b.inc'\n";
+        let root = host.add_file(SourceText::new(text), FileRole::Top);
+        let asked = |host: &Host| -> Vec<String> {
+            let missing = host.missing_includes(root).into_iter();
+            missing.map(|request| request.path).collect()
+        };
+        assert_eq!(asked(&host), ["b.inc", "a.inc"]);
+        host.set_include(root, "b.inc", Include::Refused("no such file".to_owned()));
+        let inner = SourceText::new(".include 'c.inc'\n");
+        let inner = host.add_file(inner, FileRole::Included);
+        host.set_include(root, "a.inc", Include::File(inner));
+        assert_eq!(asked(&host), ["c.inc"]);
+    }
+
+    #[test]
+    fn the_role_decides_on_the_title() {
+        let mut host = Host::new(|| Duration::ZERO);
+        let file = host.add_file(SourceText::new("R1 a\n"), FileRole::Top);
+        let faults = |host: &Host| host.file(file).map_or(0, |parse| parse.errors.len());
+        assert_eq!(faults(&host), 0);
+        host.set_role(file, FileRole::Included);
+        assert_eq!(faults(&host), 1);
     }
 }

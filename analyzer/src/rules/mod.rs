@@ -13,4 +13,4 @@ mod values;
 mod wiring;
 
 pub use context::{BlockContext, TextContext};
-pub use registry::{Family, Rule, find_rule, rules, screen_findings, text_findings};
+pub use registry::{Family, Rule, find_rule, nearest_rule, rules, screen_findings, text_findings};

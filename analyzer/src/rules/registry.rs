@@ -2,6 +2,7 @@
 
 use super::context::{BlockContext, TextContext};
 use super::{coverage, names, stability, syntax, values, wiring};
+use crate::elaborate::nearest;
 use crate::finding::{Finding, RuleId, Severity};
 use crate::text::Span;
 
@@ -80,6 +81,11 @@ pub fn rules() -> impl Iterator<Item = &'static Rule> {
 /// A rule by name.
 pub fn find_rule(id: &str) -> Option<&'static Rule> {
     rules().find(|rule| rule.id.as_str() == id)
+}
+
+/// The rule whose name is nearest to `id`, when one is near enough to be meant.
+pub fn nearest_rule(id: &str) -> Option<&'static Rule> {
+    nearest(id, rules().map(|rule| rule.id.as_str())).and_then(find_rule)
 }
 
 /// All findings of the text, in the order of the rules.
