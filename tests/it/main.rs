@@ -1,7 +1,9 @@
 //! Tests of the whole: the suite of cases with known answers, the samples, and the built program
 //! as its users drive it.
 
+mod amplifiers;
 mod cli;
 mod load;
+mod random_amplifiers;
 mod samples;
 mod suite;

@@ -256,7 +256,7 @@ fn run(netlist: &str, expect: &Table, quantity: &str) -> Result<(), String> {
         "rhp_modes" => {
             equal(case.modes().unstable(), whole())?;
             let solver = case.solver(Vec::new(), &[]);
-            let counted = count(&solver, &[&case.modes()], &|| false);
+            let counted = count(&solver, Some(&case.modes()), None, &|| false);
             equal(
                 counted.map(|c| c.on_roots).map_err(|f| f.reason),
                 Ok(whole()),
@@ -321,7 +321,8 @@ fn run(netlist: &str, expect: &Table, quantity: &str) -> Result<(), String> {
 fn counted(case: &Case, expect: &Table) -> Result<squeg_analyzer::stability::Determinant, String> {
     let solver = case.solver(case.sources(expect), &[]);
     let on = natural_modes(&solver, false, 1500, &|| false).map_err(|e| format!("{e:?}"))?;
-    count(&solver, &[&on], &|| false).map_err(|failure| failure.reason)
+    let off = natural_modes(&solver, true, 1500, &|| false).ok();
+    count(&solver, Some(&on), off.as_ref(), &|| false).map_err(|failure| failure.reason)
 }
 
 fn verdict(case: &Case, want: &str) -> Result<(), String> {

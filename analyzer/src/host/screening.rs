@@ -265,8 +265,12 @@ fn determinant(screen: &Screen) -> DeterminantReport {
             encirclements: found.turns(),
             off_network_unstable: found.off_roots,
             evaluations: found.evaluations,
-            certified: Some(true),
-            failed_hz: None,
+            certified: Some(found.relied_above_hz.is_none()),
+            failed_hz: found.relied_above_hz.map(|hz| {
+                let fastest = screen.modes.iter().flat_map(|modes| &modes.list);
+                let end = fastest.map(|mode| mode.s_rad_per_s.norm() / std::f64::consts::TAU);
+                [hz, end.fold(hz, f64::max)]
+            }),
         },
         (None, Some(Doubt::NotCounted(failure))) => DeterminantReport {
             evaluations: failure.evaluations,

@@ -26,6 +26,26 @@ pub struct Polynomial<'a> {
     pub degree: usize,
     /// Multiplicity of the root at zero.
     pub at_zero: usize,
+    /// All nonzero roots as found otherwise (conjugates included); empty when they are not known.
+    /// They are used only beyond the frequency up to which the determinant can be followed.
+    pub known: &'a [Complex64],
+}
+
+impl Polynomial<'_> {
+    /// d ln det / d ln s by the known roots.
+    fn predicted_slope(&self, s: Complex64) -> Option<Complex64> {
+        if self.known.is_empty() {
+            return None;
+        }
+        let sum: Complex64 = self.known.iter().map(|root| s / (s - root)).sum();
+        Some(sum + self.at_zero as f64)
+    }
+
+    /// Phase of det / s^degree at s, by the known roots; it goes to zero at infinity.
+    fn predicted_rest(&self, s: Complex64) -> f64 {
+        let one = Complex64::new(1.0, 0.0);
+        self.known.iter().map(|root| (one - root / s).arg()).sum()
+    }
 }
 
 /// What the count found.
@@ -37,6 +57,9 @@ pub struct Count {
     pub evaluations: usize,
     /// Largest distance of a count from a whole number before rounding.
     pub remainder: f64,
+    /// Above this w the determinant cannot be followed (rounding ghosts) and the known roots were
+    /// relied on; `None` when it was followed to its monomial.
+    pub relied_above: Option<f64>,
 }
 
 /// Why there is no count.
@@ -102,8 +125,8 @@ pub fn right_half_plane_roots(
     let finite = || seeds.iter().copied().filter(|w| *w > 0.0 && w.is_finite());
     let low = finite().fold(1.0, f64::min);
     let high = finite().fold(1.0, f64::max);
-    let first = walker.settle(low, false)?;
-    let last = walker.settle(high, true)?;
+    let (first, _) = walker.settle(low, false)?;
+    let (last, relied) = walker.settle(high, true)?;
     let mut grid: Vec<f64> = finite()
         .flat_map(|w| [w * 0.999, w, w * 1.001])
         .filter(|w| *w > first.w && *w < last.w)
@@ -112,7 +135,7 @@ pub fn right_half_plane_roots(
     grid.dedup_by(|a, b| (*a - *b).abs() <= 1e-9 * *b);
     let mut turned = vec![0.0; polynomials.len()];
     walker.walk(&first, &last, &grid, &mut turned)?;
-    walker.close(&first, &last, &turned)
+    walker.close(&first, &last, relied, &turned)
 }
 
 /// Values of all determinants at one point of the ray.
@@ -166,13 +189,28 @@ impl Walker<'_> {
         Ok(out)
     }
 
-    /// Goes outward from `w` until every determinant is a monomial to within a few per cent.
-    fn settle(&mut self, w: f64, upward: bool) -> Result<Sample, CountFailure> {
-        const NEAR: f64 = 0.05;
-        let factor = if upward { 10.0 } else { 0.1 };
-        let mut at = w * factor;
+    /// Goes outward from `w` until every determinant is nearly a monomial: its slope is within 0.5
+    /// of the exact power. Every root beyond would take a whole 1 from the slope, and the phase left
+    /// over is then well below the quarter turn that [`near_real`] can tell. Going no further than
+    /// needed matters: where a coefficient is exactly zero, rounding leaves a ghost of about 1e-16
+    /// that takes over far outside.
+    ///
+    /// Upward, where the ghost comes before the monomial does, the last point at which the slope
+    /// is what the known roots say is taken instead (second value: true).
+    fn settle(&mut self, w: f64, upward: bool) -> Result<(Sample, bool), CountFailure> {
+        const NEAR: f64 = 0.5;
+        let factor = if upward { 4.0 } else { 0.25 };
+        let mut at = if upward { w / 256.0 } else { w * factor };
+        let mut last_good: Option<Sample> = None;
         loop {
-            let sample = self.samples(&[at])?.remove(0);
+            let sample = match self.samples(&[at]) {
+                Ok(mut samples) => samples.remove(0),
+                Err(CountFailure::Numeric(error)) => {
+                    let good = last_good.ok_or(CountFailure::Numeric(error))?;
+                    return Ok((good, true));
+                }
+                Err(other) => return Err(other),
+            };
             let settled = self.polynomials.iter().enumerate().all(|(k, polynomial)| {
                 let power = if upward {
                     polynomial.degree
@@ -181,8 +219,21 @@ impl Walker<'_> {
                 };
                 (sample.slope[k] - power as f64).norm() < NEAR
             });
-            if settled {
-                return Ok(sample);
+            if settled && (!upward || at > w) {
+                return Ok((sample, false));
+            }
+            if upward {
+                let s = at * Complex64::new(AXIS_TOLERANCE, 1.0);
+                let as_known = self.polynomials.iter().enumerate().all(|(k, polynomial)| {
+                    polynomial
+                        .predicted_slope(s)
+                        .is_some_and(|slope| (sample.slope[k] - slope).norm() < 0.05)
+                });
+                match (as_known, last_good.take()) {
+                    (true, _) => last_good = Some(sample),
+                    (false, Some(good)) => return Ok((good, true)),
+                    (false, None) => {}
+                }
             }
             at *= factor;
             if !(1e-30..1e30).contains(&at) {
@@ -246,7 +297,13 @@ impl Walker<'_> {
     }
 
     /// The phase left over beyond both ends, and the counts.
-    fn close(&self, first: &Sample, last: &Sample, turned: &[f64]) -> Result<Count, CountFailure> {
+    fn close(
+        &self,
+        first: &Sample,
+        last: &Sample,
+        relied: bool,
+        turned: &[f64],
+    ) -> Result<Count, CountFailure> {
         let ray = (1.0f64).atan2(AXIS_TOLERANCE);
         let mut roots = Vec::new();
         let mut remainder: f64 = 0.0;
@@ -254,7 +311,12 @@ impl Walker<'_> {
             let (d, z) = (polynomial.degree as f64, polynomial.at_zero as f64);
             // det / s^z is real at the origin, det / s^d at infinity.
             let before = near_real(first.ln[k].im - z * ray);
-            let after = -near_real(last.ln[k].im - d * ray);
+            let after = if relied {
+                let s = last.w * Complex64::new(AXIS_TOLERANCE, 1.0);
+                -polynomial.predicted_rest(s)
+            } else {
+                -near_real(last.ln[k].im - d * ray)
+            };
             let total = before + turned[k] + after;
             let count = (ray * (d - z) - total) / PI;
             let whole = count.round();
@@ -268,6 +330,7 @@ impl Walker<'_> {
             roots,
             evaluations: self.evaluations,
             remainder,
+            relied_above: relied.then_some(last.w),
         })
     }
 }

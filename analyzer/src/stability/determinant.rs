@@ -23,6 +23,9 @@ pub struct Determinant {
     pub evaluations: usize,
     /// Largest distance of a count from a whole number before rounding.
     pub remainder: f64,
+    /// Above this frequency the determinant cannot be followed in double precision and the natural
+    /// modes were relied on; `None` when it was followed to the end.
+    pub relied_above_hz: Option<f64>,
 }
 
 impl Determinant {
@@ -45,30 +48,35 @@ pub struct DeterminantFailure {
     pub evaluations: usize,
 }
 
-/// Counts by the argument of both determinants. `modes` only place the first steps.
+/// Counts by the argument of both determinants. `on_modes` and `off_modes` place the first steps,
+/// and stand in for the determinant where it cannot be followed any more (far above the band).
 ///
 /// # Errors
 /// See [`DeterminantFailure`].
 pub fn count(
     solver: &Solver,
-    modes: &[&Modes],
+    on_modes: Option<&Modes>,
+    off_modes: Option<&Modes>,
     stop: &dyn Fn() -> bool,
 ) -> Result<Determinant, DeterminantFailure> {
-    let mut seeds: Vec<f64> = modes
+    let (on_known, off_known) = (whole_plane(on_modes), whole_plane(off_modes));
+    let mut seeds: Vec<f64> = on_known
         .iter()
-        .flat_map(|modes| modes.list.iter())
-        .map(|mode| mode.normalised.norm())
+        .chain(&off_known)
+        .map(|mode| mode.norm())
         .collect();
     seeds.extend([normalised_rad(1e3), normalised_rad(1e11)]);
     let on = Polynomial {
         values: &solver.on,
         degree: solver.on_structure.finite_modes,
         at_zero: solver.on_structure.zero_modes,
+        known: &on_known,
     };
     let off = Polynomial {
         values: &solver.off,
         degree: solver.off_structure.finite_modes,
         at_zero: solver.off_structure.zero_modes,
+        known: &off_known,
     };
     let both = [on, off];
     let polynomials = if solver.off_structure.singular {
@@ -83,7 +91,20 @@ pub fn count(
         off_roots: count.roots.get(1).copied(),
         evaluations: count.evaluations,
         remainder: count.remainder,
+        relied_above_hz: count.relied_above.map(hertz_of),
     })
+}
+
+/// All modes of the whole plane, normalised.
+fn whole_plane(modes: Option<&Modes>) -> Vec<Complex64> {
+    let list = modes.map_or(&[][..], |modes| &modes.list);
+    list.iter()
+        .flat_map(|mode| {
+            let s = mode.normalised;
+            [Some(s), (s.im > 0.0).then(|| s.conj())]
+        })
+        .flatten()
+        .collect()
 }
 
 fn in_words(failure: &CountFailure) -> DeterminantFailure {

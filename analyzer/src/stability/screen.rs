@@ -233,8 +233,7 @@ impl Work<'_> {
             _ => None,
         };
         let modes = on.ok();
-        let known: Vec<&Modes> = modes.iter().chain(off.iter()).collect();
-        let counted = count(self.solver, &known, &stop);
+        let counted = count(self.solver, modes.as_ref(), off.as_ref(), &stop);
         self.cancel.check()?;
         let listed = match &modes {
             Some(modes) => self.list(modes, off.as_ref(), &active),
