@@ -3,12 +3,16 @@
 
 mod accepted;
 mod fingerprint;
+mod hover;
+mod outline;
 mod prepared;
 mod report;
 mod screening;
 mod source;
 mod trace;
 
+pub use hover::{CAUTION, Hover};
+pub use outline::{Symbol, SymbolKind, outline};
 pub use prepared::{Prepared, Screening};
 pub use report::{
     BlockReport, DeterminantReport, DrivingPointReport, ModeReport, Share, Sight, TwoPortReport,
