@@ -11,7 +11,7 @@ if [ $# -ne 4 ]; then
     exit 2
 fi
 server=$(realpath -- "$1")
-CHECK_FILE=$(realpath -- "$2") CHECK_LINE=$3 CHECK_TEXT=$4 CHECK_CONFIG=$here/editor-configs/emacs/squeg.el
+CHECK_FILE=$(realpath -- "$2") CHECK_LINE=$3 CHECK_TEXT=$4 CHECK_CONFIG=$here/../../editor-configs/emacs/squeg.el
 export CHECK_FILE CHECK_LINE CHECK_TEXT CHECK_CONFIG
 work=$(mktemp -d)
 trap 'rm -rf "$work"' EXIT

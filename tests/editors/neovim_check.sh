@@ -17,7 +17,7 @@ server=$(realpath -- "$1")
 CHECK_FILE=$(realpath -- "$2")
 CHECK_LINE=$3
 CHECK_TEXT=$4
-CHECK_CONFIG=$(realpath -- "${5:-$here/editor-configs/neovim/squeg.lua}")
+CHECK_CONFIG=$(realpath -- "${5:-$here/../../editor-configs/neovim/squeg.lua}")
 export CHECK_FILE CHECK_LINE CHECK_TEXT CHECK_CONFIG
 if [ -z "${NVIM:-}" ]; then
     NVIM=$here/venv/bin/nvim

@@ -26,6 +26,11 @@ fn counts_agree_on_two_hundred_random_amplifiers() {
         let turns = block.determinant.encirclements.expect("counted");
         let p = block.determinant.off_network_unstable.expect("counted") as i64;
         assert_eq!(z, turns + p, "{context}");
+        let growing = block.modes.iter().filter(|mode| mode.growth_per_s > 0.0);
+        let listed: i64 = growing.map(|mode| if mode.hz > 0.0 { 2 } else { 1 }).sum();
+        assert_eq!(listed, z, "{context}: every growing mode is listed");
+        let named = |mode: &squeg_analyzer::host::ModeReport| !mode.parts.is_empty();
+        assert!(block.modes.iter().all(named), "{context}: parts take part");
         unstable += usize::from(z > 0);
         largest = largest.max(block.unknowns);
     }

@@ -79,9 +79,18 @@ fn eigenvalues(matrix: DMatrix<f64>) -> Result<Vec<Complex64>, NumericError> {
     if order == 0 {
         return Ok(Vec::new());
     }
-    let schur = nalgebra::linalg::Schur::try_new(matrix, f64::EPSILON, 200 * order + 1000)
-        .ok_or(NumericError::NoConvergence { order })?;
-    Ok(schur.complex_eigenvalues().iter().copied().collect())
+    // With repeated eigenvalues the iteration can stall a few units in the last place away from
+    // its criterion; a transposed start and a slightly wider criterion are tried before giving up.
+    let limit = 200 * order + 1000;
+    for widening in [1.0, 4.0, 16.0, 64.0] {
+        for start in [matrix.clone(), matrix.transpose()] {
+            let width = widening * f64::EPSILON;
+            if let Some(schur) = nalgebra::linalg::Schur::try_new(start, width, limit) {
+                return Ok(schur.complex_eigenvalues().iter().copied().collect());
+            }
+        }
+    }
+    Err(NumericError::NoConvergence { order })
 }
 
 /// A double and the same number exactly; they are zero together.

@@ -190,16 +190,11 @@ pub fn null_vectors(
     modes: &[Complex64],
 ) -> Result<Vec<(Vec<Complex64>, Vec<Complex64>)>, NumericError> {
     const ROUNDS: usize = 3;
-    const BESIDE: f64 = 1e-9;
     let (n, lanes) = (plan.n(), plan.lanes());
     let mut ws = plan.workspace();
     let mut out = Vec::with_capacity(modes.len());
     for batch in modes.chunks(lanes) {
-        let points: Vec<Complex64> = batch
-            .iter()
-            .map(|s| s * Complex64::new(1.0 + BESIDE, 0.3 * BESIDE))
-            .collect();
-        plan.factor_sound(values, &points, &mut ws)?;
+        factor_beside(plan, values, batch, &mut ws)?;
         let start: Vec<Complex64> = (0..n * lanes)
             .map(|k| {
                 let row = (k / lanes) as f64;
@@ -220,6 +215,29 @@ pub fn null_vectors(
         }
     }
     Ok(out)
+}
+
+/// Factors beside each mode: as near as the pivots bear. Where several modes coincide, the matrix
+/// is so nearly singular that more distance is needed.
+fn factor_beside(
+    plan: &Plan,
+    values: &Values,
+    modes: &[Complex64],
+    ws: &mut Workspace,
+) -> Result<(), NumericError> {
+    let mut result = Ok(());
+    for beside in [1e-9, 1e-8, 1e-7, 1e-6, 1e-5] {
+        let points: Vec<Complex64> = modes
+            .iter()
+            .map(|s| s * Complex64::new(1.0 + beside, 0.3 * beside))
+            .collect();
+        result = plan.factor_sound(values, &points, ws);
+        match &result {
+            Err(NumericError::SingularPoint { .. } | NumericError::Unsound { .. }) => {}
+            _ => return result,
+        }
+    }
+    result
 }
 
 fn normalise(x: &mut [Complex64], lanes: usize) {

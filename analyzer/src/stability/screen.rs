@@ -268,7 +268,12 @@ impl Work<'_> {
             .or(disagreement)
             .or(list_doubt)
             .or(drive_doubt);
-        let verdict = verdict_of(modes.as_ref(), determinant.as_ref(), doubt.as_ref());
+        let verdict = verdict_of(
+            modes.as_ref(),
+            determinant.as_ref(),
+            doubt.as_ref(),
+            too_many_states.is_some(),
+        );
         Ok(Screen {
             unknowns,
             sweep_hz,
@@ -397,6 +402,7 @@ fn verdict_of(
     modes: Option<&Modes>,
     determinant: Option<&Determinant>,
     doubt: Option<&Doubt>,
+    too_many: bool,
 ) -> Verdict {
     let Some(determinant) = determinant else {
         return Verdict::Undetermined;
@@ -404,10 +410,12 @@ fn verdict_of(
     if matches!(doubt, Some(Doubt::Disagree(_))) {
         return Verdict::Undetermined;
     }
-    if determinant.on_roots > 0 {
+    // Unstable is said when both counts see it; beyond the limit of states there is but one.
+    let both = modes.is_some() || too_many;
+    if determinant.on_roots > 0 && both {
         return Verdict::Unstable;
     }
-    if doubt.is_some() {
+    if !both || doubt.is_some() {
         return Verdict::Undetermined;
     }
     match modes {
