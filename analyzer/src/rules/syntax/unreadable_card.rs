@@ -68,6 +68,7 @@ title
 R1 a 0
 ^^ unreadable-card
 C1 a 0 1p
+R2 a 0 1k
 ",
         );
         check(
@@ -76,6 +77,7 @@ title
 R1 a 0 4k7x9
        ^^^^^ unreadable-card
 C1 a 0 1p
+R2 a 0 1k
 ",
         );
     }

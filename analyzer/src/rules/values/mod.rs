@@ -1,8 +1,22 @@
 //! Values of parts.
 
+mod coupling_not_passive;
+mod coupling_over_unity;
+mod farad_or_femto;
 mod milli_or_mega;
+mod negative_part;
+mod value_not_finite;
+mod zero_part;
 
 use super::Rule;
 
 /// The family, names in order.
-pub(super) static RULES: &[&Rule] = &[&milli_or_mega::RULE];
+pub(super) static RULES: &[&Rule] = &[
+    &coupling_not_passive::RULE,
+    &coupling_over_unity::RULE,
+    &farad_or_femto::RULE,
+    &milli_or_mega::RULE,
+    &negative_part::RULE,
+    &value_not_finite::RULE,
+    &zero_part::RULE,
+];

@@ -1,0 +1,77 @@
+//! `unused-parameter`: a parameter that nothing uses.
+
+use crate::finding::{Finding, RuleId, Severity};
+use crate::rules::context::Uses;
+use crate::rules::{Family, Rule, TextContext};
+
+/// The rule.
+pub static RULE: Rule = Rule {
+    id: RuleId("unused-parameter"),
+    family: Family::Names,
+    severity: Severity::Info,
+    summary: "a parameter that nothing uses",
+    explanation: EXPLANATION,
+    text: Some(check),
+    screen: None,
+};
+
+const EXPLANATION: &str = "\
+## What it does
+Reports a parameter of the file that is checked which nothing names.
+
+## Why it matters
+It may be left over, or the name that should use it is misspelt.
+
+## Method and source
+All cards, expressions and marks are searched.
+
+## Limits
+Only definitions in a file with cards of its own at the top are looked at, so that libraries stay quiet.
+
+## Example
+```
+.param spare=1
+```
+
+## Fix
+Remove it, or use it.
+";
+
+fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
+    let uses = Uses::new(context.program);
+    for (name, span) in uses.unused_parameters(context.program) {
+        out.push(RULE.finding(span, format!("parameter `{name}` is not used")));
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use crate::rules::testing::check;
+
+    #[test]
+    fn triggers() {
+        check(
+            r#"title
+.param spare=1 r=2
+       ^^^^^ unused-parameter
+R1 a 0 r
+R2 a 0 1
+"#,
+        );
+    }
+
+    #[test]
+    fn near_misses() {
+        check(
+            r#"title
+.param spare=1 r='SPARE'
+R1 a 0 r
+R2 a 0 1
+"#,
+        );
+        check(
+            r#".param spare=1
+"#,
+        );
+    }
+}
