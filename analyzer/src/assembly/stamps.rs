@@ -95,10 +95,9 @@ fn coupled_roots(circuit: &Circuit) -> HashMap<PartId, f64> {
             for id in inductors {
                 if let Some(PartKind::Inductor { henry, .. }) =
                     circuit.part(*id).map(|part| &part.kind)
+                    && *henry > 0.0
                 {
-                    if *henry > 0.0 {
-                        roots.insert(*id, henry.sqrt());
-                    }
+                    roots.insert(*id, henry.sqrt());
                 }
             }
         }

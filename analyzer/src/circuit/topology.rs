@@ -122,10 +122,10 @@ pub fn voltage_loops(circuit: &Circuit) -> Vec<PartId> {
         if !ideal {
             continue;
         }
-        if let [a, b] = part.kind.terminals() {
-            if !islands.join(*a, *b) {
-                closing.push(id);
-            }
+        if let [a, b] = part.kind.terminals()
+            && !islands.join(*a, *b)
+        {
+            closing.push(id);
         }
     }
     closing

@@ -158,14 +158,14 @@ impl Builder<'_> {
             self.resistor("ri", [bottom, s], &mut parts);
         }
         self.transconductance([d, s], [g, bottom], &mut parts)?;
-        if let Some(siemens) = self.mark.value("gds") {
-            if siemens != 0.0 {
-                let ohm = 1.0 / siemens;
-                parts.push(PartSpec::new(
-                    "gds",
-                    PartKind::Resistor { nodes: [d, s], ohm },
-                ));
-            }
+        if let Some(siemens) = self.mark.value("gds")
+            && siemens != 0.0
+        {
+            let ohm = 1.0 / siemens;
+            parts.push(PartSpec::new(
+                "gds",
+                PartKind::Resistor { nodes: [d, s], ohm },
+            ));
         }
         self.capacitor("cgd", [g, d], &mut parts);
         self.capacitor("cds", [d, s], &mut parts);

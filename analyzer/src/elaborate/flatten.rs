@@ -758,6 +758,7 @@ impl<'p> Flattener<'p> {
         true
     }
 
+    #[allow(clippy::too_many_arguments)] // a card with its place, its nodes and what surrounds it
     fn enter(
         &mut self,
         work: &mut Work,
@@ -794,6 +795,7 @@ impl<'p> Flattener<'p> {
         self.enter_scope(work, instance, card_ref, card, target, nodes, used);
     }
 
+    #[allow(clippy::too_many_arguments)] // as `enter`
     fn enter_scope(
         &mut self,
         work: &mut Work,
@@ -847,10 +849,10 @@ impl<'p> Flattener<'p> {
             marks: handed_down(outer, name, used),
         };
         for (slot, node) in plan.pins.iter().zip(nodes) {
-            if let Slot::Local(index) = slot {
-                if let Some(place) = inner.nodes.get_mut(*index as usize) {
-                    *place = Some(*node);
-                }
+            if let Slot::Local(index) = slot
+                && let Some(place) = inner.nodes.get_mut(*index as usize)
+            {
+                *place = Some(*node);
             }
         }
         let before = work.flat.circuit.parts.len();

@@ -153,6 +153,9 @@ enum KeyKind {
     Text,
 }
 
+/// The keys of a mark.
+type Keys = &'static [(&'static str, KeyKind)];
+
 const BLOCK: &[(&str, KeyKind)] = &[
     ("in", KeyKind::Text),
     ("out", KeyKind::Text),
@@ -201,7 +204,7 @@ const TIE: &[(&str, KeyKind)] = &[("to", KeyKind::Text)];
 const LOOP: &[(&str, KeyKind)] = &[("at", KeyKind::Text)];
 
 /// The mark words and their keys; `None`: any key is allowed (the keys are names of parts).
-const WORDS: &[(&str, Option<&[(&str, KeyKind)]>)] = &[
+const WORDS: &[(&str, Option<Keys>)] = &[
     ("block", Some(BLOCK)),
     ("rail", Some(RAIL)),
     ("tie", Some(TIE)),

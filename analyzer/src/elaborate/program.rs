@@ -284,10 +284,8 @@ impl Gatherer<'_> {
                 self.open_subcircuit(text(*name), Span::new(file, name.range), pins);
                 self.define(file, parse, params);
             }
-            Dot::Ends { .. } => {
-                if self.open.len() > 1 {
-                    self.open.pop();
-                }
+            Dot::Ends { .. } if self.open.len() > 1 => {
+                self.open.pop();
             }
             Dot::Param(params) => self.define(file, parse, params),
             Dot::Model { name, kind, params } => {
@@ -336,14 +334,14 @@ impl Gatherer<'_> {
             .and_then(|id| self.program.scope(id))
             .and_then(|scope| scope.name.as_ref())
             .map(|(_, span)| *span);
-        if let Some(other) = place {
-            if other != span {
-                let kind = IssueKind::DuplicateName {
-                    what: "subcircuit",
-                    name,
-                };
-                self.issue(kind, span, Some(other));
-            }
+        if let Some(other) = place
+            && other != span
+        {
+            let kind = IssueKind::DuplicateName {
+                what: "subcircuit",
+                name,
+            };
+            self.issue(kind, span, Some(other));
         }
         self.open.push(id);
     }

@@ -78,10 +78,10 @@ impl Host {
 
     /// Gives a file a new text. Nothing happens when the text is the same.
     pub fn set_text(&mut self, file: FileId, source: SourceText) {
-        if let Some(slot) = self.files.get_mut(file.0 as usize) {
-            if slot.source.text != source.text {
-                *slot = SourceFile::new(source, slot.role);
-            }
+        if let Some(slot) = self.files.get_mut(file.0 as usize)
+            && slot.source.text != source.text
+        {
+            *slot = SourceFile::new(source, slot.role);
         }
     }
 

@@ -273,10 +273,10 @@ impl Walker<'_> {
                     failing.push((a, b));
                 }
             }
-            if self.evaluations + middles.len() > BUDGET {
-                if let Some((a, b)) = failing.first() {
-                    return Err(self.open_interval(a, b));
-                }
+            if self.evaluations + middles.len() > BUDGET
+                && let Some((a, b)) = failing.first()
+            {
+                return Err(self.open_interval(a, b));
             }
             let samples = self.samples(&middles)?;
             open = Vec::with_capacity(2 * samples.len());

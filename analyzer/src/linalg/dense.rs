@@ -42,15 +42,15 @@ fn equilibrate(a: &mut DMatrix<Complex64>) -> (Vec<i32>, Vec<i32>) {
         }
     };
     for _ in 0..SWEEPS {
-        for k in 0..n {
+        for (k, sum) in row.iter_mut().enumerate() {
             let e = half_exponent(a.row(k).iter().fold(0.0, |m, v| v.norm().max(m)));
             a.row_mut(k).iter_mut().for_each(|v| *v *= 2f64.powi(e));
-            row[k] += e;
+            *sum += e;
         }
-        for k in 0..n {
+        for (k, sum) in column.iter_mut().enumerate() {
             let e = half_exponent(a.column(k).iter().fold(0.0, |m, v| v.norm().max(m)));
             a.column_mut(k).iter_mut().for_each(|v| *v *= 2f64.powi(e));
-            column[k] += e;
+            *sum += e;
         }
     }
     (row, column)

@@ -179,6 +179,9 @@ fn step(
     mode.converged = size <= SETTLED;
 }
 
+/// Right and left null vector, each of length n.
+pub type NullVectors = (Vec<Complex64>, Vec<Complex64>);
+
 /// Right and left null vector of A(s) at a mode, by inverse iteration beside it.
 /// `out` per mode: (right x, left w), each of length n.
 ///
@@ -188,7 +191,7 @@ pub fn null_vectors(
     plan: &Plan,
     values: &Values,
     modes: &[Complex64],
-) -> Result<Vec<(Vec<Complex64>, Vec<Complex64>)>, NumericError> {
+) -> Result<Vec<NullVectors>, NumericError> {
     const ROUNDS: usize = 3;
     let (n, lanes) = (plan.n(), plan.lanes());
     let mut ws = plan.workspace();

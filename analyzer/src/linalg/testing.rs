@@ -1,6 +1,5 @@
 //! Random systems for the tests of this module.
 
-use crate::linalg::exact::Field61;
 use crate::linalg::pattern::Pattern;
 use crate::linalg::values::Values;
 
@@ -100,11 +99,6 @@ impl Stamps {
         Self::put(&mut self.c, k, k, -v);
         k
     }
-    pub(crate) fn mutual(&mut self, k1: usize, k2: usize, m: f64) {
-        Self::put(&mut self.c, k1, k2, -m);
-        Self::put(&mut self.c, k2, k1, -m);
-    }
-    /// Ideal voltage source (short for the small-signal problem).
     pub(crate) fn short(&mut self, a: usize, b: usize) -> usize {
         self.branch(a, b)
     }
@@ -133,11 +127,6 @@ impl Stamps {
     }
     pub(crate) fn values(&self) -> Values {
         self.values_on(self.pattern())
-    }
-    pub(crate) fn exact(list: &[(u32, u32, f64)]) -> Vec<(u32, u32, Field61)> {
-        list.iter()
-            .map(|&(r, c, v)| (r, c, Field61::from_f64(v).expect("finite")))
-            .collect()
     }
 }
 

@@ -13,11 +13,6 @@ pub(crate) struct Twofold {
 }
 
 impl Twofold {
-    pub(crate) const ZERO: Self = Self {
-        high: 0.0,
-        low: 0.0,
-    };
-
     pub(crate) fn from(x: f64) -> Self {
         Self { high: x, low: 0.0 }
     }
@@ -81,11 +76,6 @@ pub(crate) struct TwofoldComplex {
 }
 
 impl TwofoldComplex {
-    pub(crate) const ZERO: Self = Self {
-        re: Twofold::ZERO,
-        im: Twofold::ZERO,
-    };
-
     pub(crate) fn from(z: Complex64) -> Self {
         Self {
             re: Twofold::from(z.re),

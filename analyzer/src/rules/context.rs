@@ -176,11 +176,11 @@ fn least_eigenvalue(circuit: &Circuit, coils: &[PartId], couplings: &[PartId]) -
             continue;
         };
         let place = |coil: PartId| coils.iter().position(|c| *c == coil);
-        if let (Some(i), Some(j)) = (place(inductors[0]), place(inductors[1])) {
-            if i != j {
-                matrix[(i, j)] += factor;
-                matrix[(j, i)] += factor;
-            }
+        if let (Some(i), Some(j)) = (place(inductors[0]), place(inductors[1]))
+            && i != j
+        {
+            matrix[(i, j)] += factor;
+            matrix[(j, i)] += factor;
         }
     }
     let values = matrix.symmetric_eigenvalues();

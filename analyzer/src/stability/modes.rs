@@ -191,10 +191,10 @@ fn shares(
     let mut parts = vec![Complex64::default(); circuit.parts.len()];
     for stamp in &solver.system.stamps {
         let product = at(left, stamp.row) * at(&right, stamp.column) * stamp.value;
-        if stamp.with_s {
-            if let Some(sum) = state.get_mut(stamp.column as usize) {
-                *sum += product;
-            }
+        if stamp.with_s
+            && let Some(sum) = state.get_mut(stamp.column as usize)
+        {
+            *sum += product;
         }
         let weight = f64::from(stamp.power);
         let factor = if stamp.with_s {

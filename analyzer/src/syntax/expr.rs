@@ -440,8 +440,14 @@ impl Compiler<'_> {
         match arguments {
             1 => unary_function(&lower).map(|f| self.ops.push(Op::Unary(Unary::Function(f)))),
             2 => binary_function(&lower).map(|f| self.ops.push(Op::Binary(Binary::Function(f)))),
-            3 if lower == "if" => Some(self.ops.push(Op::Choose)),
-            3 if lower == "limit" => Some(self.ops.push(Op::Clamp)),
+            3 if lower == "if" => {
+                self.ops.push(Op::Choose);
+                Some(())
+            }
+            3 if lower == "limit" => {
+                self.ops.push(Op::Clamp);
+                Some(())
+            }
             _ => None,
         }
         .is_some()

@@ -51,10 +51,12 @@ pub fn parse_number_prefix(text: &str) -> Result<(Number, usize), NumberFault> {
     let digits = &text[..mantissa_end];
     let (scale, scale_length) = scale_factor(&text[number_end..]);
     let after_scale = number_end + scale_length;
-    if scale_length > 0 && exponent == 0 && !digits.contains('.') {
-        if let Some(found) = infix_number(text, digits, scale, after_scale) {
-            return found;
-        }
+    if scale_length > 0
+        && exponent == 0
+        && !digits.contains('.')
+        && let Some(found) = infix_number(text, digits, scale, after_scale)
+    {
+        return found;
     }
     let unit = unit_length(&text[after_scale..]);
     let value = decimal(digits, exponent, scale)?;

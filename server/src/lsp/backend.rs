@@ -58,10 +58,10 @@ impl Backend {
                 let current = document.version;
                 document.analysis.clone().filter(|a| a.version == current)
             };
-            if let Some(analysis) = &found {
-                if analysis.screening.is_some() {
-                    return found;
-                }
+            if let Some(analysis) = &found
+                && analysis.screening.is_some()
+            {
+                return found;
             }
             if tokio::time::timeout_at(until, told).await.is_err() {
                 return found;

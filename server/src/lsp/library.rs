@@ -111,10 +111,10 @@ impl Library {
             return Include::File(from);
         }
         let opened = open.get(&real).or_else(|| open.get(&path));
-        if let Some(id) = self.included.get(&real) {
-            if opened.is_some() || real.is_file() {
-                return Include::File(*id);
-            }
+        if let Some(id) = self.included.get(&real)
+            && (opened.is_some() || real.is_file())
+        {
+            return Include::File(*id);
         }
         let source = match opened {
             Some(text) => Ok(SourceText::new(text.as_str())),

@@ -53,7 +53,7 @@ fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
             let Some(origin) = map.part(id) else {
                 continue;
             };
-            if !(value == 0.0) || part.role != PartRole::Card {
+            if value != 0.0 || part.role != PartRole::Card {
                 continue;
             }
             let span = Span::new(origin.file, origin.value);

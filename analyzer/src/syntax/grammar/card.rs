@@ -238,9 +238,10 @@ impl Fields<'_> {
             let text = self.text(third.range).to_owned();
             if text.eq_ignore_ascii_case("dc") {
                 value = self.words.get(3).copied();
-            } else if third.quoted || starts_like_number(&text) {
-                value = Some(third);
-            } else if self.words.len() == 3 && !is_waveform(&text) {
+            } else if third.quoted
+                || starts_like_number(&text)
+                || (self.words.len() == 3 && !is_waveform(&text))
+            {
                 value = Some(third);
             }
         }

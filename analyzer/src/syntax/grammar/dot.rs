@@ -165,10 +165,10 @@ fn definitions(tree: &Tree, fields: &[Field], errors: &mut Vec<SyntaxError>) -> 
     }
     for definition in &found {
         let text = tree.slice(definition.value.range);
-        if let Some(kind) = super::card::value_fault(text, definition.value.quoted) {
-            if !text.is_empty() {
-                errors.push(fault(kind, definition.value.range));
-            }
+        if let Some(kind) = super::card::value_fault(text, definition.value.quoted)
+            && !text.is_empty()
+        {
+            errors.push(fault(kind, definition.value.range));
         }
     }
     found
