@@ -2,8 +2,11 @@
 //! as its users drive it.
 
 mod amplifiers;
+mod bad_input;
 mod cli;
 mod load;
 mod random_amplifiers;
+mod rules_table;
 mod samples;
 mod suite;
+mod tidy;

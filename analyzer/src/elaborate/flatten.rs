@@ -1,18 +1,16 @@
 //! Hierarchy to a flat circuit. One call flattens one root: the top level, or a subcircuit
 //! with its default parameters. The way back to the text is kept beside it.
 
-use super::device::stand_in;
 use super::issue::{Issue, IssueKind, LimitKey};
 use super::marks::{DeviceMark, MarkData, MarkUse, read_mark};
 use super::names::{Folded, nearest};
 use super::params::Env;
 use super::program::{CardRef, Program, ScopeId};
-use super::source_map::{InstanceId, InstanceOrigin, Origin, SourceMap};
-use crate::circuit::{
-    Circuit, Node, NodeId, NodeRef, Part, PartId, PartKind, PartRole, Sense, is_ground,
-};
-use crate::syntax::{Card, CardKind, StatementKind, Value, Word};
-use crate::text::{FileId, Span, TextRange};
+use super::scope::Slot;
+use super::source_map::{InstanceId, InstanceOrigin, SourceMap};
+use crate::circuit::{Circuit, Node, NodeId, NodeRef, PartId, PartKind};
+use crate::syntax::{Card, CardKind, StatementKind, Word};
+use crate::text::{Span, TextRange};
 use std::collections::{HashMap, HashSet};
 use std::rc::Rc;
 
@@ -67,40 +65,24 @@ pub struct Flat {
     pub visited: HashSet<ScopeId>,
 }
 
-/// Where a node word of a card leads.
-#[derive(Clone, Copy)]
-enum Slot {
-    Ground,
-    Global(u32),
-    Local(u32),
-}
-
-/// A scope's nodes and cards with node words looked up once.
-struct ScopePlan {
-    names: Vec<(String, Span)>,
-    pins: Vec<Slot>,
-    cards: Vec<Vec<Slot>>,
-    refers: bool,
-}
-
 /// Flattens roots of one program.
 pub struct Flattener<'p> {
-    program: &'p Program,
-    limits: Limits,
-    plans: HashMap<ScopeId, Rc<ScopePlan>>,
-    global_index: HashMap<Folded, u32>,
-    global_names: Vec<(String, Span)>,
+    pub(super) program: &'p Program,
+    pub(super) limits: Limits,
+    pub(super) plans: HashMap<ScopeId, Rc<super::scope::ScopePlan>>,
+    pub(super) global_index: HashMap<Folded, u32>,
+    pub(super) global_names: Vec<(String, Span)>,
 }
 
 /// One instance in work.
-struct Instance {
-    scope: ScopeId,
-    env: Rc<Env>,
-    path: String,
-    id: Option<InstanceId>,
-    multiplier: f64,
-    nodes: Vec<Option<NodeRef>>,
-    marks: Vec<(String, DeviceMark)>,
+pub(super) struct Instance {
+    pub(super) scope: ScopeId,
+    pub(super) env: Rc<Env>,
+    pub(super) path: String,
+    pub(super) id: Option<InstanceId>,
+    pub(super) multiplier: f64,
+    pub(super) nodes: Vec<Option<NodeRef>>,
+    pub(super) marks: Vec<(String, DeviceMark)>,
 }
 
 impl<'p> Flattener<'p> {
@@ -165,7 +147,7 @@ impl<'p> Flattener<'p> {
         chain
     }
 
-    fn scope_span(&self, scope: ScopeId) -> Option<Span> {
+    pub(super) fn scope_span(&self, scope: ScopeId) -> Option<Span> {
         let (_, span) = self.program.scope(scope)?.name.as_ref()?;
         Some(*span)
     }
@@ -178,118 +160,6 @@ impl<'p> Flattener<'p> {
         };
         for scope in visited {
             duplicate_names(self.program, scope, &mut work.flat.issues);
-        }
-    }
-
-    fn plan(&mut self, scope: ScopeId) -> Rc<ScopePlan> {
-        if let Some(plan) = self.plans.get(&scope) {
-            return Rc::clone(plan);
-        }
-        let plan = Rc::new(self.make_plan(scope));
-        self.plans.insert(scope, Rc::clone(&plan));
-        plan
-    }
-
-    fn make_plan(&mut self, id: ScopeId) -> ScopePlan {
-        let mut plan = ScopePlan {
-            names: Vec::new(),
-            pins: Vec::new(),
-            cards: Vec::new(),
-            refers: false,
-        };
-        let Some(scope) = self.program.scope(id) else {
-            return plan;
-        };
-        let mut index: HashMap<String, u32> = HashMap::new();
-        for (name, span) in &scope.pins {
-            let slot = self.slot(name, *span, &mut index, &mut plan.names);
-            plan.pins.push(slot);
-        }
-        for card_ref in &scope.cards {
-            let Some(card) = card_of(self.program, *card_ref) else {
-                plan.cards.push(Vec::new());
-                continue;
-            };
-            plan.refers |= matches!(
-                card.kind,
-                CardKind::Coupling { .. } | CardKind::CurrentControlled { .. }
-            );
-            let slots = card
-                .kind
-                .nodes()
-                .iter()
-                .map(|word| {
-                    let name = self.program.text(card_ref.file, word.range);
-                    let span = Span::new(card_ref.file, word.range);
-                    self.slot(name, span, &mut index, &mut plan.names)
-                })
-                .collect();
-            plan.cards.push(slots);
-        }
-        plan
-    }
-
-    fn slot(
-        &mut self,
-        name: &str,
-        span: Span,
-        index: &mut HashMap<String, u32>,
-        names: &mut Vec<(String, Span)>,
-    ) -> Slot {
-        if is_ground(name) {
-            return Slot::Ground;
-        }
-        let lower = name.to_ascii_lowercase();
-        if let Some(&local) = index.get(&lower) {
-            return Slot::Local(local);
-        }
-        let folded = Folded::new(name);
-        if self.program.globals.contains_key(&folded) {
-            let next = self.global_names.len() as u32;
-            let at = *self.global_index.entry(folded).or_insert(next);
-            if at == next {
-                self.global_names.push((name.to_owned(), span));
-            }
-            return Slot::Global(at);
-        }
-        let local = names.len() as u32;
-        index.insert(lower, local);
-        names.push((name.to_owned(), span));
-        Slot::Local(local)
-    }
-
-    fn node(
-        &self,
-        work: &mut Work,
-        plan: &ScopePlan,
-        instance: &mut Instance,
-        slot: Slot,
-    ) -> NodeRef {
-        match slot {
-            Slot::Ground => NodeRef::Ground,
-            Slot::Global(index) => {
-                if work.globals.len() <= index as usize {
-                    work.globals.resize(index as usize + 1, None);
-                }
-                if let Some(Some(node)) = work.globals.get(index as usize) {
-                    return *node;
-                }
-                let (name, span) = self.global_names[index as usize].clone();
-                let node = work.add_node(name, span);
-                work.globals[index as usize] = Some(node);
-                node
-            }
-            Slot::Local(index) => {
-                if let Some(Some(node)) = instance.nodes.get(index as usize) {
-                    return *node;
-                }
-                let (name, span) = &plan.names[index as usize];
-                let node = work.add_node(join(&instance.path, name), *span);
-                if let Some(slot) = instance.nodes.get_mut(index as usize) {
-                    *slot = Some(node);
-                }
-                node
-            }
         }
     }
 
@@ -320,8 +190,7 @@ impl<'p> Flattener<'p> {
                 CardKind::Coupling { .. } | CardKind::CurrentControlled { .. } => {
                     late.push((*card_ref, position));
                 }
-                CardKind::Instance { subcircuit, .. }
-                    if self.is_undefined(work, instance, *card_ref, card, *subcircuit) => {}
+                _ if self.is_left_out(work, instance, *card_ref, card) => {}
                 _ => {
                     let nodes = self.nodes(work, &plan, instance, position);
                     let added = self.card(work, instance, *card_ref, card, &nodes, &mut used);
@@ -333,7 +202,9 @@ impl<'p> Flattener<'p> {
             }
         }
         for (card_ref, position) in late {
-            if let Some(card) = card_of(program, card_ref) {
+            let fits = card_of(program, card_ref)
+                .filter(|card| self.refers_soundly(work, instance, card_ref, card, &sensed));
+            if let Some(card) = fits {
                 let nodes = self.nodes(work, &plan, instance, position);
                 self.referring_card(work, instance, card_ref, card, &nodes, &sensed);
             }
@@ -343,20 +214,6 @@ impl<'p> Flattener<'p> {
         if instance.path.is_empty() {
             work.flat.marks = marks;
         }
-    }
-
-    fn nodes(
-        &self,
-        work: &mut Work,
-        plan: &ScopePlan,
-        instance: &mut Instance,
-        position: usize,
-    ) -> Vec<NodeRef> {
-        let slots = plan.cards.get(position).cloned().unwrap_or_default();
-        slots
-            .into_iter()
-            .map(|slot| self.node(work, plan, instance, slot))
-            .collect()
     }
 
     /// Reads the scope's marks; device marks join those handed down from outside.
@@ -467,297 +324,6 @@ impl<'p> Flattener<'p> {
         }
     }
 
-    fn add_not_computed(
-        &self,
-        work: &mut Work,
-        instance: &Instance,
-        card_ref: CardRef,
-        card: &Card,
-        nodes: &[NodeRef],
-        reason: String,
-    ) {
-        let kind = PartKind::NotComputed {
-            nodes: nodes.to_vec(),
-            reason,
-        };
-        self.add(
-            work,
-            instance,
-            card_ref,
-            card,
-            None,
-            kind,
-            TextRange::default(),
-        );
-    }
-
-    /// R C L V I E G.
-    fn element(
-        &self,
-        work: &mut Work,
-        instance: &Instance,
-        card_ref: CardRef,
-        card: &Card,
-        nodes: &[NodeRef],
-    ) -> Option<PartId> {
-        let m = instance.multiplier * self.multiplier(work, instance, card_ref, card);
-        let (value, range) = match &card.kind {
-            CardKind::TwoTerminal { value, model, .. } => {
-                if let Some(model) = model {
-                    self.check_model(work, instance, card_ref, *model);
-                }
-                (*value, value.map(|v| v.range))
-            }
-            CardKind::VoltageControlled { gain, .. } => (Some(*gain), Some(gain.range)),
-            CardKind::Source { value, .. } => (None, value.map(|v| v.range)),
-            _ => return None,
-        };
-        let number = match value {
-            Some(value) => match self.value(work, instance, card_ref.file, value) {
-                Some(number) => number,
-                None => {
-                    self.gap(work, card_ref, card, "the value of a card is not known");
-                    return None;
-                }
-            },
-            None => 0.0,
-        };
-        let kind = match (card.letter, nodes) {
-            ('r', &[a, b]) => PartKind::Resistor {
-                nodes: [a, b],
-                ohm: number / m,
-            },
-            ('c', &[a, b]) => PartKind::Capacitor {
-                nodes: [a, b],
-                farad: number * m,
-            },
-            ('l', &[a, b]) => PartKind::Inductor {
-                nodes: [a, b],
-                henry: number / m,
-            },
-            ('v', &[a, b]) => PartKind::VoltageSource {
-                nodes: [a, b],
-                series_ohm: 0.0,
-                series_henry: 0.0,
-            },
-            ('i', &[a, b]) => PartKind::CurrentSource { nodes: [a, b] },
-            ('e', &[p, n, cp, cn]) => PartKind::Vcvs {
-                nodes: [p, n],
-                control: [cp, cn],
-                gain: number,
-            },
-            ('g', &[p, n, cp, cn]) => PartKind::Vccs {
-                nodes: [p, n],
-                control: [cp, cn],
-                siemens: number * m,
-            },
-            _ => return None,
-        };
-        let id = self.add(
-            work,
-            instance,
-            card_ref,
-            card,
-            None,
-            kind,
-            range.unwrap_or_default(),
-        );
-        matches!(card.letter, 'v' | 'l').then_some(id)
-    }
-
-    /// K F H: cards that name other parts.
-    fn referring_card(
-        &self,
-        work: &mut Work,
-        instance: &Instance,
-        card_ref: CardRef,
-        card: &Card,
-        nodes: &[NodeRef],
-        sensed: &HashMap<String, PartId>,
-    ) {
-        let m = instance.multiplier * self.multiplier(work, instance, card_ref, card);
-        match &card.kind {
-            CardKind::Coupling { inductors, factor } => {
-                let Some(factor) = factor else { return };
-                let Some(value) = self.value(work, instance, card_ref.file, *factor) else {
-                    self.gap(work, card_ref, card, "the value of a card is not known");
-                    return;
-                };
-                let found: Vec<PartId> = inductors
-                    .iter()
-                    .filter_map(|word| {
-                        self.find(work, instance, card_ref.file, *word, sensed, "an inductor")
-                    })
-                    .collect();
-                if found.len() < inductors.len() {
-                    self.gap(work, card_ref, card, "a coupling names no inductor");
-                }
-                for (index, first) in found.iter().enumerate() {
-                    for second in found.iter().skip(index + 1) {
-                        let kind = PartKind::Coupling {
-                            inductors: [*first, *second],
-                            factor: value,
-                        };
-                        self.add(work, instance, card_ref, card, None, kind, factor.range);
-                    }
-                }
-            }
-            CardKind::CurrentControlled { sense, gain, .. } => {
-                let value = self.value(work, instance, card_ref.file, *gain);
-                let part = self.find(work, instance, card_ref.file, *sense, sensed, "a V source");
-                let (Some(value), Some(part), &[p, n]) = (value, part, nodes) else {
-                    self.gap(work, card_ref, card, "a controlled source cannot be placed");
-                    return;
-                };
-                let kind = if card.letter == 'f' {
-                    PartKind::Cccs {
-                        nodes: [p, n],
-                        sense: Sense(part),
-                        gain: value,
-                    }
-                } else {
-                    PartKind::Ccvs {
-                        nodes: [p, n],
-                        sense: Sense(part),
-                        ohm: value / m,
-                    }
-                };
-                self.add(work, instance, card_ref, card, None, kind, gain.range);
-            }
-            _ => {}
-        }
-    }
-
-    /// A V source or inductor by name: in this scope, or by path from here.
-    fn find(
-        &self,
-        work: &mut Work,
-        instance: &Instance,
-        file: FileId,
-        word: Word,
-        sensed: &HashMap<String, PartId>,
-        expected: &'static str,
-    ) -> Option<PartId> {
-        let name = self.program.text(file, word.range);
-        let local = sensed.get(&name.to_ascii_lowercase()).copied();
-        let found = local.or_else(|| work.flat.circuit.find_part(&join(&instance.path, name)));
-        let fits = found.filter(|id| {
-            let kind = work.flat.circuit.part(*id).map(|part| &part.kind);
-            match expected {
-                "an inductor" => matches!(kind, Some(PartKind::Inductor { .. })),
-                _ => matches!(kind, Some(PartKind::VoltageSource { .. })),
-            }
-        });
-        if fits.is_none() {
-            work.flat.issues.push(Issue {
-                kind: IssueKind::UnknownPart {
-                    name: name.to_owned(),
-                    expected,
-                },
-                span: Span::new(file, word.range),
-                other: None,
-            });
-        }
-        fits
-    }
-
-    fn stand_in(
-        &self,
-        work: &mut Work,
-        instance: &Instance,
-        card_ref: CardRef,
-        card: &Card,
-        nodes: &[NodeRef],
-        mark: &DeviceMark,
-    ) {
-        let own = self.multiplier(work, instance, card_ref, card);
-        let m = instance.multiplier * own;
-        let path = join(
-            &instance.path,
-            self.program.text(card_ref.file, card.name.range),
-        );
-        if own > 1.0 {
-            let span = Span::new(card_ref.file, card.name.range);
-            work.flat.multiplied.push((path.clone(), span, own));
-        }
-        let flat = &mut work.flat;
-        let span = Span::new(card_ref.file, card.name.range);
-        let mut inner = |name: &str| {
-            let id = NodeId(flat.circuit.nodes.len() as u32);
-            flat.circuit.nodes.push(Node {
-                name: join(&path, name),
-            });
-            flat.map.nodes.push(span);
-            NodeRef::Node(id)
-        };
-        match stand_in(mark, nodes, &mut inner) {
-            Ok(parts) => {
-                for part in parts {
-                    let kind = scaled(part.kind, m);
-                    self.add(
-                        work,
-                        instance,
-                        card_ref,
-                        card,
-                        Some(part.name),
-                        kind,
-                        TextRange::default(),
-                    );
-                }
-            }
-            Err(message) => {
-                let kind = IssueKind::BadMark {
-                    message,
-                    nearest: None,
-                };
-                work.flat.issues.push(Issue {
-                    kind,
-                    span: mark.target.span,
-                    other: Some(span),
-                });
-                self.gap(
-                    work,
-                    card_ref,
-                    card,
-                    "the stand-in of a device cannot be built",
-                );
-            }
-        }
-    }
-
-    /// Reports an instance of a subcircuit that is not defined, unless a device mark stands in
-    /// for it. Such a card adds nothing, not even its nodes.
-    fn is_undefined(
-        &self,
-        work: &mut Work,
-        instance: &Instance,
-        card_ref: CardRef,
-        card: &Card,
-        subcircuit: Word,
-    ) -> bool {
-        let program = self.program;
-        let own = program
-            .text(card_ref.file, card.name.range)
-            .to_ascii_lowercase();
-        let name = program.text(card_ref.file, subcircuit.range);
-        let known = program.find_subcircuit(instance.scope, &Folded::new(name));
-        if known.is_some() || instance.marks.iter().any(|(target, _)| *target == own) {
-            return false;
-        }
-        let known: Vec<&str> = program
-            .outward(instance.scope)
-            .flat_map(|scope| scope.subcircuits.keys().map(Folded::as_str))
-            .collect();
-        let kind = IssueKind::UnknownSubcircuit {
-            name: name.to_owned(),
-            nearest: nearest(name, known).map(str::to_owned),
-        };
-        work.issue(kind, Span::new(card_ref.file, subcircuit.range), None);
-        let reason = format!("the subcircuit `{name}` is not defined");
-        self.gap(work, card_ref, card, &reason);
-        true
-    }
-
     #[allow(clippy::too_many_arguments)] // a card with its place, its nodes and what surrounds it
     fn enter(
         &mut self,
@@ -862,162 +428,26 @@ impl<'p> Flattener<'p> {
             work.flat.multiplied.push((path, span, own));
         }
     }
-
-    /// The instance's own parameter values, and its multiplier.
-    fn overrides(
-        &self,
-        work: &mut Work,
-        outer: &Instance,
-        card_ref: CardRef,
-        card: &Card,
-        target: ScopeId,
-    ) -> (HashMap<Folded, f64>, f64) {
-        let mut values = HashMap::new();
-        let mut multiplier = 1.0;
-        let scope = self.program.scope(target);
-        for param in &card.params {
-            let key = self.program.text(card_ref.file, param.key.range);
-            let folded = Folded::new(key);
-            let known = scope.is_some_and(|scope| scope.params.contains_key(&folded));
-            let is_multiplier = key.eq_ignore_ascii_case("m") && !known;
-            if !known && !is_multiplier {
-                let names = scope.map(|scope| scope.param_order.iter().map(Folded::as_str));
-                let near = nearest(key, names.into_iter().flatten()).map(str::to_owned);
-                let kind = IssueKind::UnknownParameter {
-                    name: key.to_owned(),
-                    nearest: near,
-                };
-                let span = Span::new(card_ref.file, param.key.range);
-                work.issue(kind, span, self.scope_span(target));
-                continue;
-            }
-            let Some(value) = self.value(work, outer, card_ref.file, param.value) else {
-                continue;
-            };
-            if is_multiplier {
-                multiplier = if value > 0.0 { value } else { 1.0 };
-            } else {
-                values.insert(folded, value);
-            }
-        }
-        (values, multiplier)
-    }
-
-    /// `m=` of a card that is no instance.
-    fn multiplier(
-        &self,
-        work: &mut Work,
-        instance: &Instance,
-        card_ref: CardRef,
-        card: &Card,
-    ) -> f64 {
-        let param = card.params.iter().find(|param| {
-            self.program
-                .text(card_ref.file, param.key.range)
-                .eq_ignore_ascii_case("m")
-        });
-        param
-            .and_then(|param| self.value(work, instance, card_ref.file, param.value))
-            .filter(|m| *m > 0.0)
-            .unwrap_or(1.0)
-    }
-
-    fn value(
-        &self,
-        work: &mut Work,
-        instance: &Instance,
-        file: FileId,
-        value: Value,
-    ) -> Option<f64> {
-        instance
-            .env
-            .value(self.program, file, value, &mut work.flat.issues)
-    }
-
-    fn check_model(&self, work: &mut Work, instance: &Instance, card_ref: CardRef, model: Word) {
-        let name = self.program.text(card_ref.file, model.range);
-        if self
-            .program
-            .find_model(instance.scope, &Folded::new(name))
-            .is_some()
-        {
-            return;
-        }
-        let known: Vec<&str> = self
-            .program
-            .outward(instance.scope)
-            .flat_map(|scope| scope.models.keys().map(Folded::as_str))
-            .collect();
-        let kind = IssueKind::UnknownModel {
-            name: name.to_owned(),
-            nearest: nearest(name, known).map(str::to_owned),
-        };
-        work.issue(kind, Span::new(card_ref.file, model.range), None);
-    }
-
-    fn gap(&self, work: &mut Work, card_ref: CardRef, card: &Card, reason: &str) {
-        let name = self.program.text(card_ref.file, card.name.range);
-        work.flat.gaps.push(Gap {
-            reason: format!("{reason} (`{name}`)"),
-            span: Span::new(card_ref.file, card.name.range),
-        });
-    }
-
-    #[allow(clippy::too_many_arguments)] // one place where a part meets its origin
-    fn add(
-        &self,
-        work: &mut Work,
-        instance: &Instance,
-        card_ref: CardRef,
-        card: &Card,
-        suffix: Option<&str>,
-        kind: PartKind,
-        value: TextRange,
-    ) -> PartId {
-        let name = self.program.text(card_ref.file, card.name.range);
-        let mut full = join(&instance.path, name);
-        if let Some(suffix) = suffix {
-            full.push('.');
-            full.push_str(suffix);
-        }
-        let id = PartId(work.flat.circuit.parts.len() as u32);
-        work.flat.circuit.parts.push(Part {
-            name: full,
-            kind,
-            role: if suffix.is_some() {
-                PartRole::Device
-            } else {
-                PartRole::Card
-            },
-        });
-        work.flat.map.parts.push(Origin {
-            file: card_ref.file,
-            name: card.name.range,
-            value,
-            instance: instance.id,
-        });
-        id
-    }
 }
 
 /// The flat circuit in the making.
-struct Work {
-    flat: Flat,
-    globals: Vec<Option<NodeRef>>,
-    stack: Vec<ScopeId>,
-    budget: usize,
-    cut: bool,
+pub(super) struct Work {
+    pub(super) flat: Flat,
+    pub(super) globals: Vec<Option<NodeRef>>,
+    pub(super) stack: Vec<ScopeId>,
+    pub(super) budget: usize,
+    pub(super) cut: bool,
 }
 
 impl Work {
-    fn add_node(&mut self, name: String, span: Span) -> NodeRef {
+    pub(super) fn add_node(&mut self, name: String, span: Span) -> NodeRef {
         let id = NodeId(self.flat.circuit.nodes.len() as u32);
         self.flat.circuit.nodes.push(Node { name });
         self.flat.map.nodes.push(span);
         NodeRef::Node(id)
     }
 
-    fn issue(&mut self, kind: IssueKind, span: Span, other: Option<Span>) {
+    pub(super) fn issue(&mut self, kind: IssueKind, span: Span, other: Option<Span>) {
         self.flat.issues.push(Issue { kind, span, other });
     }
 
@@ -1061,7 +491,7 @@ fn handed_down(outer: &Instance, name: &str, used: &mut [bool]) -> Vec<(String, 
 }
 
 /// A device part in `m` parallel copies.
-fn scaled(kind: PartKind, m: f64) -> PartKind {
+pub(super) fn scaled(kind: PartKind, m: f64) -> PartKind {
     match kind {
         PartKind::Resistor { nodes, ohm } => PartKind::Resistor {
             nodes,

@@ -2,6 +2,7 @@
 //! The one place that joins text and meaning. Faults become [`Issue`]s; nothing fails.
 
 mod block;
+mod cards;
 mod device;
 mod flatten;
 mod issue;
@@ -9,6 +10,7 @@ mod marks;
 mod names;
 mod params;
 mod program;
+mod scope;
 mod source_map;
 
 pub use block::{BlockCircuit, Elaborated, PassiveClaim, TerminationFault, elaborate_blocks};

@@ -5,7 +5,7 @@
 //! right of the ray and its mirror image. Roots on the axis are passed on the right, so they are
 //! not counted (argument principle, Cauchy; the degree and z are exact, see `exact`).
 //!
-//! The steps are chosen so that no root can be passed unseen: see [`passes`].
+//! The steps are chosen so that no root can be passed unseen: see `passes`.
 
 use super::error::NumericError;
 use super::plan::Plan;
@@ -191,7 +191,7 @@ impl Walker<'_> {
 
     /// Goes outward from `w` until every determinant is nearly a monomial: its slope is within 0.5
     /// of the exact power. Every root beyond would take a whole 1 from the slope, and the phase left
-    /// over is then well below the quarter turn that [`near_real`] can tell. Going no further than
+    /// over is then well below the quarter turn that `near_real` can tell. Going no further than
     /// needed matters: where a coefficient is exactly zero, rounding leaves a ghost of about 1e-16
     /// that takes over far outside.
     ///

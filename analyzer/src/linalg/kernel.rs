@@ -58,7 +58,7 @@ fn madd<const FMA: bool>(a: f64, b: f64, c: f64) -> f64 {
     if FMA { a.mul_add(b, c) } else { a * b + c }
 }
 
-/// Sum of products x[a] * y[b] over index pairs, four independent chains.
+/// Sum of products `x[a] * y[b]` over index pairs, four independent chains.
 #[inline(always)]
 fn dot<const L: usize, const FMA: bool>(
     pairs: &[[u32; 2]],

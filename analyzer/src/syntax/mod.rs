@@ -5,6 +5,7 @@
 mod ast;
 mod error;
 pub mod expr;
+mod functions;
 mod grammar;
 mod lexer;
 mod tree;

@@ -31,7 +31,8 @@ pub(super) fn read_card(
             Field::Quoted(range) => *range,
             Field::Param(param) => param.key.range,
             Field::Call { name, .. } => name.range,
-            _ => return None,
+            Field::Sign(range) => *range,
+            Field::Word(_) => return None,
         };
         let text = tree.slice(range).to_owned();
         errors.push(fault(SyntaxErrorKind::UnknownElement(text), range));
@@ -56,7 +57,7 @@ pub(super) fn read_card(
                 quoted: true,
             }),
             Field::Param(param) => card.params.push(*param),
-            Field::Call { .. } | Field::Sign => {}
+            Field::Call { .. } | Field::Sign(_) => {}
         }
     }
     let kind = card.kind(letter)?;

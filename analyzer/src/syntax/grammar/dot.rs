@@ -160,7 +160,7 @@ fn definitions(tree: &Tree, fields: &[Field], errors: &mut Vec<SyntaxError>) -> 
             }),
             Field::Word(word) => extend_last(&mut found, word.range),
             Field::Quoted(range) => extend_last(&mut found, *range),
-            Field::Sign => {}
+            Field::Sign(_) => {}
         }
     }
     for definition in &found {

@@ -27,7 +27,7 @@ pub(super) enum Field {
         value: Value,
     },
     /// A parenthesis or comma that belongs to no key.
-    Sign,
+    Sign(TextRange),
 }
 
 /// Reads the fields of an item.
@@ -80,7 +80,7 @@ impl FieldReader<'_> {
                 self.unclosed(range);
                 Field::Quoted(range)
             }
-            _ => Field::Sign,
+            _ => Field::Sign(range),
         };
         Some(field)
     }

@@ -73,8 +73,15 @@ pub fn parse(text: Arc<str>, role: FileRole) -> Parse {
 fn read_item(tree: &Tree, item: &Item, errors: &mut Vec<SyntaxError>) -> Option<StatementKind> {
     match item.kind {
         ItemKind::Card => {
+            let before = errors.len();
             let fields = read_fields(tree, item, errors);
-            card::read_card(tree, &fields, errors).map(|card| StatementKind::Card(Box::new(card)))
+            let card = card::read_card(tree, &fields, errors)?;
+            // A card with a fault is left out whole: half a card would change the circuit.
+            let faults = errors.get(before..).unwrap_or_default();
+            let whole = faults
+                .iter()
+                .all(|error| matches!(error.kind, SyntaxErrorKind::UnexpectedWord(_)));
+            whole.then(|| StatementKind::Card(Box::new(card)))
         }
         ItemKind::Dot => {
             let fields = read_fields(tree, item, errors);
@@ -99,7 +106,7 @@ fn read_mark(tree: &Tree, item: &Item, fields: &[Field]) -> Mark {
             Field::Word(word) => words.push(*word),
             Field::Quoted(range) => words.push(Word { range: *range }),
             Field::Param(param) => params.push(*param),
-            Field::Call { .. } | Field::Sign => {}
+            Field::Call { .. } | Field::Sign(_) => {}
         }
     }
     let word = if words.is_empty() {
