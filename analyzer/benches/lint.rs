@@ -1,0 +1,72 @@
+//! Cost of reading text and of screening a block, by size.
+
+#[allow(dead_code)]
+#[path = "../../tests/it/amplifiers/mod.rs"]
+mod amplifiers;
+
+use criterion::{BenchmarkId, Criterion, Throughput, criterion_group, criterion_main};
+use squeg_analyzer::cancel::Cancel;
+use squeg_analyzer::host::{FileRole, Host, SourceText};
+use std::hint::black_box;
+use std::time::Duration;
+
+/// Ladders in subcircuits, `cards` cards in all.
+fn ladders(cards: usize) -> String {
+    let mut text = String::from("ladders\n");
+    let subcircuits = cards / 100;
+    for k in 0..subcircuits {
+        text += &format!(".subckt lad{k} a b\n");
+        let mut from = "a".to_owned();
+        for j in 0..49 {
+            let to = if j == 48 {
+                "b".to_owned()
+            } else {
+                format!("n{j}")
+            };
+            text += &format!("R{j} {from} {to} {}\nC{j} {to} 0 {}p\n", 10 + j, 1 + j);
+            from = to;
+        }
+        text += &format!(".ends\nX{k} x{k} x{} lad{k}\n", k + 1);
+    }
+    text + &format!("R0 x0 0 50\nR1 x{subcircuits} 0 50\n")
+}
+
+fn read(criterion: &mut Criterion) {
+    let mut group = criterion.benchmark_group("text rules");
+    for cards in [1_000, 10_000, 100_000] {
+        let text = ladders(cards);
+        group.throughput(Throughput::Elements(cards as u64));
+        group.bench_with_input(BenchmarkId::from_parameter(cards), &text, |b, text| {
+            b.iter(|| {
+                let mut host = Host::new(|| Duration::ZERO);
+                let file = host.add_file(SourceText::new(text.as_str()), FileRole::Top);
+                black_box(host.prepare(file).findings().len())
+            });
+        });
+    }
+    group.finish();
+}
+
+fn screen(criterion: &mut Criterion) {
+    let mut group = criterion.benchmark_group("screen, modes and all driving points");
+    let texts = [
+        (63, amplifiers::amplifier_63()),
+        (200, amplifiers::amplifier_200(0)),
+    ];
+    for (unknowns, text) in &texts {
+        let mut host = Host::new(|| Duration::ZERO);
+        let file = host.add_file(SourceText::new(text.as_str()), FileRole::Top);
+        let prepared = host.prepare(file);
+        group.bench_with_input(BenchmarkId::from_parameter(unknowns), &prepared, |b, p| {
+            b.iter(|| black_box(p.screen(&Cancel::new()).map(|s| s.blocks.len())));
+        });
+    }
+    group.finish();
+}
+
+criterion_group! {
+    name = benches;
+    config = Criterion::default().sample_size(10).warm_up_time(Duration::from_millis(500)).measurement_time(Duration::from_secs(3));
+    targets = read, screen
+}
+criterion_main!(benches);
