@@ -1,6 +1,6 @@
 //! Cost of reading text and of screening a block, by size.
 
-#[allow(dead_code)]
+#[allow(dead_code, unused_imports)]
 #[path = "../../tests/it/amplifiers/mod.rs"]
 mod amplifiers;
 
