@@ -111,6 +111,8 @@ fn one_bad_line_takes_nothing_from_the_others() {
         let got = told(&loaded, &text, Some(10));
         let lost: Vec<_> = want.iter().filter(|w| !got.contains(w)).collect();
         assert!(lost.is_empty(), "{bad}: lost {lost:?}\ngot {got:?}");
+        let added: Vec<_> = got.iter().filter(|g| !want.contains(g)).collect();
+        assert!(added.is_empty(), "{bad}: added {added:?}");
     }
 }
 

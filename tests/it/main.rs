@@ -8,5 +8,6 @@ mod load;
 mod random_amplifiers;
 mod rules_table;
 mod samples;
+mod screen_rules;
 mod suite;
 mod tidy;

@@ -33,8 +33,11 @@ pub struct ScreenRequest<'a> {
 
 /// Modes of less damping are listed.
 pub const LISTED_DAMPING: f64 = 0.5;
-/// A part takes part in a mode from this share on.
+/// A part takes part in a mode from this share on ..
 const TAKES_PART: f64 = 0.01;
+/// .. or when a change of its value moves the mode by this much of its distance from the axis: a
+/// weak source decides over a mode of high Q.
+const MOVES_DAMPING: f64 = 0.1;
 
 /// A listed mode with its shares.
 #[derive(Clone, PartialEq, Debug)]
@@ -309,10 +312,14 @@ impl Work<'_> {
             .into_iter()
             .zip(shares)
             .map(|(mode, shares)| {
-                let takes_part = shares
-                    .parts
-                    .iter()
-                    .any(|(id, share)| *share >= TAKES_PART && active.sources.contains(id));
+                let reach = MOVES_DAMPING * mode.s_rad_per_s.re.abs();
+                let moves = |id: &PartId| {
+                    let sensitivity = shares.sensitivity_rad_per_s.get(id.0 as usize);
+                    sensitivity.is_some_and(|ds| ds.norm() >= reach)
+                };
+                let takes_part = shares.parts.iter().any(|(id, share)| {
+                    active.sources.contains(id) && (*share >= TAKES_PART || moves(id))
+                });
                 let unmoved = off.is_some_and(|off| {
                     off.list.iter().any(|other| {
                         let gap = (other.s_rad_per_s - mode.s_rad_per_s).norm();
