@@ -8,6 +8,7 @@ pub mod cancel;
 pub mod circuit;
 pub mod config;
 pub mod elaborate;
+pub mod explain;
 pub mod finding;
 pub mod host;
 pub mod linalg;

@@ -75,6 +75,7 @@ const ARROWS: &[(&str, &[&str])] = &[
             "host",
         ],
     ),
+    ("explain", &["finding", "rules"]),
     (
         "host",
         &[

@@ -237,6 +237,7 @@ pub(super) fn read_mark(
         program,
         card,
         mark,
+        extent: statement.range,
         env,
         issues,
     };
@@ -247,6 +248,7 @@ struct MarkReader<'a> {
     program: &'a Program,
     card: CardRef,
     mark: &'a Mark,
+    extent: TextRange,
     env: &'a Rc<Env>,
     issues: &'a mut Vec<Issue>,
 }
@@ -281,6 +283,13 @@ impl MarkReader<'_> {
     }
 
     fn read(&mut self) -> Option<MarkUse> {
+        if self.mark.word.range.is_empty() {
+            let key = self.mark.params.first().map(|param| param.key.range);
+            let place = key.unwrap_or(self.extent);
+            let message = "a mark starts with its word, such as `block`".to_owned();
+            self.bad(place, message, None);
+            return None;
+        }
         let word = self.text(self.mark.word.range).to_ascii_lowercase();
         let Some((_, keys)) = WORDS.iter().find(|(name, _)| *name == word) else {
             let near = nearest(&word, WORDS.iter().map(|(name, _)| *name));
@@ -448,7 +457,8 @@ impl MarkReader<'_> {
                 None => (piece, None),
             };
             if name.is_empty() {
-                self.bad(whole, "a port's name is missing".to_owned(), None);
+                let place = if whole.is_empty() { range } else { whole };
+                self.bad(place, "a port's name is missing".to_owned(), None);
                 continue;
             }
             let value = ohm

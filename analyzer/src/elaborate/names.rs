@@ -17,7 +17,8 @@ impl Folded {
 }
 
 /// The known name nearest to `name`, if one is near enough to be meant: at most a third of the
-/// letters differ (edit distance of Levenshtein, 1966, from memory; ASCII case ignored).
+/// letters differ (edit distance of Levenshtein, 1966, with swapped neighbours counted once,
+/// Damerau, 1964, both from memory; ASCII case ignored).
 pub fn nearest<'a>(name: &str, known: impl IntoIterator<Item = &'a str>) -> Option<&'a str> {
     let wanted = name.to_ascii_lowercase();
     if wanted.len() > 64 {
@@ -38,22 +39,25 @@ pub fn nearest<'a>(name: &str, known: impl IntoIterator<Item = &'a str>) -> Opti
         .map(|(_, candidate)| candidate)
 }
 
+/// Letters to add, drop, change, or swap with their neighbour.
 fn distance(a: &str, b: &str) -> usize {
-    let b: Vec<char> = b.chars().collect();
-    let mut row: Vec<usize> = (0..=b.len()).collect();
-    for (i, ca) in a.chars().enumerate() {
-        let mut diagonal = i;
-        if let Some(first) = row.first_mut() {
-            *first = i + 1;
-        }
+    let (a, b): (Vec<char>, Vec<char>) = (a.chars().collect(), b.chars().collect());
+    let mut before: Vec<usize> = Vec::new();
+    let mut above: Vec<usize> = (0..=b.len()).collect();
+    for (i, ca) in a.iter().enumerate() {
+        let mut row = Vec::with_capacity(b.len() + 1);
+        row.push(i + 1);
         for (j, cb) in b.iter().enumerate() {
-            let (left, above) = (row[j], row[j + 1]);
-            let change = diagonal + usize::from(ca != *cb);
-            diagonal = above;
-            row[j + 1] = change.min(left + 1).min(above + 1);
+            let change = above[j] + usize::from(ca != cb);
+            let mut least = change.min(row[j] + 1).min(above[j + 1] + 1);
+            if i > 0 && j > 0 && *ca == b[j - 1] && a[i - 1] == *cb {
+                least = least.min(before[j - 1] + 1);
+            }
+            row.push(least);
         }
+        before = std::mem::replace(&mut above, row);
     }
-    row.last().copied().unwrap_or(0)
+    above.last().copied().unwrap_or(0)
 }
 
 #[cfg(test)]
@@ -65,6 +69,8 @@ mod tests {
         let known = ["block", "rail", "device", "passive"];
         assert_eq!(nearest("blok", known), Some("block"));
         assert_eq!(nearest("DEVCE", known), Some("device"));
+        assert_eq!(nearest("rial", known), Some("rail"), "a swap is one slip");
+        assert_eq!(nearest("bolck", known), Some("block"));
         assert_eq!(nearest("spread", known), None);
         assert_eq!(nearest("xyz", known), None);
     }

@@ -188,7 +188,8 @@ struct Gatherer<'s> {
     store: &'s dyn FileStore,
     program: Program,
     open: Vec<ScopeId>,
-    including: Vec<FileId>,
+    /// Files being read, each with the section that is asked for, in lower case.
+    including: Vec<(FileId, Option<String>)>,
     nesting: usize,
     budget: usize,
 }
@@ -200,7 +201,8 @@ impl Gatherer<'_> {
             return;
         };
         self.program.files.insert(file, Arc::clone(&parse));
-        self.including.push(file);
+        self.including
+            .push((file, section.map(str::to_ascii_lowercase)));
         let open_before = self.open.len();
         let mut inside: Option<String> = None;
         let mut faults = parse
@@ -360,6 +362,11 @@ impl Gatherer<'_> {
         }
     }
 
+    fn is_open(&self, file: FileId, section: Option<&str>) -> bool {
+        let section = section.map(str::to_ascii_lowercase);
+        self.including.contains(&(file, section))
+    }
+
     fn include(&mut self, file: FileId, parse: &Arc<Parse>, path: &IncludePath) {
         let spelling = parse.tree.slice(path.path.range).to_owned();
         let span = Span::new(file, path.path.range);
@@ -367,12 +374,9 @@ impl Gatherer<'_> {
             .section
             .map(|word| parse.tree.slice(word.range).to_owned());
         match self.store.include(file, &spelling) {
-            Include::File(target) if self.including.contains(&target) => {
-                // A library may name a section of itself.
-                let own_section = section.is_some() && self.including.last() == Some(&target);
-                if !own_section {
-                    self.issue(IssueKind::IncludeCycle { path: spelling }, span, None);
-                }
+            // A library may ask for another section of itself.
+            Include::File(target) if self.is_open(target, section.as_deref()) => {
+                self.issue(IssueKind::IncludeCycle { path: spelling }, span, None);
             }
             Include::File(_) if self.including.len() >= self.nesting => {
                 let kind = IssueKind::LimitReached {

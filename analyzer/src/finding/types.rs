@@ -91,12 +91,13 @@ pub struct Finding {
 }
 
 impl Finding {
-    /// A finding with words and place; the rest is added by the caller.
+    /// A finding with words and place; the rest is added by the caller. Text of the netlist that
+    /// runs over several lines is put on one.
     pub fn new(rule: RuleId, severity: Severity, span: Span, message: String) -> Self {
         Self {
             rule,
             severity,
-            message,
+            message: one_line(message),
             span,
             block: None,
             node: None,
@@ -135,5 +136,32 @@ impl Finding {
             }],
         });
         self
+    }
+}
+
+/// A message on one line: control characters and the white space around them become one blank.
+fn one_line(message: String) -> String {
+    if !message.contains(char::is_control) {
+        return message;
+    }
+    let pieces = message.split(char::is_control).map(str::trim);
+    let pieces: Vec<&str> = pieces.filter(|piece| !piece.is_empty()).collect();
+    pieces.join(" ")
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::text::{FileId, TextRange};
+
+    #[test]
+    fn a_message_is_one_line() {
+        let span = Span::new(FileId(0), TextRange::empty(0));
+        let message = |text: &str| {
+            let finding = Finding::new(RuleId("x"), Severity::Info, span, text.to_owned());
+            finding.message
+        };
+        assert_eq!(message("`1 +\r\n+\t2` is  odd"), "`1 + + 2` is  odd");
+        assert_eq!(message("as it was"), "as it was");
     }
 }

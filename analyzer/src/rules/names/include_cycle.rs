@@ -1,4 +1,4 @@
-//! `include-cycle`: a file includes itself.
+//! `include-cycle`: a file that includes itself.
 
 use crate::elaborate::IssueKind;
 use crate::finding::{Finding, RuleId, Severity};
@@ -9,7 +9,7 @@ pub static RULE: Rule = Rule {
     id: RuleId("include-cycle"),
     family: Family::Names,
     severity: Severity::Error,
-    summary: "a file includes itself",
+    summary: "a file that includes itself, directly or through others",
     explanation: EXPLANATION,
     text: Some(check),
     screen: None,
@@ -17,62 +17,81 @@ pub static RULE: Rule = Rule {
 
 const EXPLANATION: &str = "\
 ## What it does
-Reports an include that leads back to a file that is being read.
+Reports an `.include` or `.lib` line that leads back to a file which is being read.
 
 ## Why it matters
-The inner include is left out; what was meant is not known.
+The netlist would have no end. The line is left out, so what stands in the file is read once.
 
 ## Method and source
-The chain of includes is followed.
+The chain of files that are open is followed (depth-first search).
 
 ## Limits
-A library may name a section of itself.
+A `.lib` line that names another section of its own file is fine.
 
 ## Example
 ```
-.include 'thisfile.cir'
+* parts.inc
+.include parts.inc
 ```
 
 ## Fix
-Remove the include.
+Take the line out, or move what both files need into a third one.
 ";
 
 fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
-    for issue in &context.elaborated.issues {
-        let IssueKind::IncludeCycle { path } = &issue.kind else {
-            continue;
-        };
-        let message = format!("`{path}` includes itself");
-        out.push(RULE.finding(issue.span, message));
-    }
+    context.issues(&RULE, out, |issue| match &issue.kind {
+        IssueKind::IncludeCycle { path } => Some(format!(
+            "`{path}` is being read already: it includes itself, directly or through others"
+        )),
+        _ => None,
+    });
 }
 
 #[cfg(test)]
 mod tests {
+    use crate::rules::testing::check_files;
 
-    fn found(path: &str, answer: crate::host::Include) -> Vec<(String, String)> {
-        use crate::host::{FileRole, Host, SourceText};
-        let text = format!("title\n.include '{path}'\nR1 a 0 1\nR2 a 0 1\n");
-        let mut host = Host::new(|| std::time::Duration::ZERO);
-        let root = host.add_file(SourceText::new(text.as_str()), FileRole::Top);
-        host.set_include(root, path, answer);
-        let prepared = host.prepare(root);
-        prepared
-            .findings()
-            .iter()
-            .map(|f| {
+    #[test]
+    fn triggers() {
+        check_files(
+            "title\n.include a.inc\nR1 a 0 1k\nC1 a 0 1p\n",
+            &[(
+                "a.inc",
+                "\
+* a
+.include a.inc
+         ^^^^^ include-cycle
+",
+            )],
+        );
+        check_files(
+            "title\n.include a.inc\nR1 a 0 1k\nC1 a 0 1p\n",
+            &[
+                ("a.inc", "* a\n.include b.inc\n"),
                 (
-                    f.rule.as_str().to_owned(),
-                    f.span.range.slice(&text).to_owned(),
-                )
-            })
-            .collect()
+                    "b.inc",
+                    "\
+* b
+.include 'a.inc'
+          ^^^^^ include-cycle
+",
+                ),
+            ],
+        );
     }
 
     #[test]
-    fn stands_on_the_path() {
-        let itself = crate::host::Include::File(crate::text::FileId(0));
-        let want = [("include-cycle".to_owned(), "own.cir".to_owned())];
-        assert_eq!(found("own.cir", itself), want);
+    fn near_misses() {
+        check_files(
+            "title\n.include a.inc\n.include b.inc\nR1 a 0 1k\nC1 a 0 1p\n",
+            &[("a.inc", ".include b.inc\n"), ("b.inc", "* b\n")],
+        );
+        check_files(
+            "title\n.lib a.lib fast\nR1 a 0 1k\n",
+            &[(
+                "a.lib",
+                ".lib fast\n.lib a.lib common\n.endl\n.lib common\nC1 a 0 1p\n.endl\n",
+            )],
+        );
     }
 }

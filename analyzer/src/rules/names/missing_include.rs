@@ -1,4 +1,4 @@
-//! `missing-include`: an included file that cannot be read.
+//! `missing-include`: an included file that could not be read.
 
 use crate::elaborate::IssueKind;
 use crate::finding::{Finding, RuleId, Severity};
@@ -9,7 +9,7 @@ pub static RULE: Rule = Rule {
     id: RuleId("missing-include"),
     family: Family::Names,
     severity: Severity::Error,
-    summary: "an included file that cannot be read",
+    summary: "an included file that could not be read",
     explanation: EXPLANATION,
     text: Some(check),
     screen: None,
@@ -17,63 +17,91 @@ pub static RULE: Rule = Rule {
 
 const EXPLANATION: &str = "\
 ## What it does
-Reports an `.include` or `.lib` whose file could not be read, with the reason.
+Reports an `.include` or `.lib` line whose file could not be read, and says why.
 
 ## Why it matters
-What it defines is missing, so nothing certain is said of blocks that need it.
+Everything the file defines is missing, so no clean verdict is given for a block in whose scope
+the line stands.
 
 ## Method and source
-Files are looked for beside the file that includes them (common practice).
+Paths are looked up from the folder of the file that includes.
 
 ## Limits
-None.
+A section that the file does not have is an empty one.
 
 ## Example
 ```
-.include 'parts.inc'
+.include 'lib/transistors.inc'
 ```
 
 ## Fix
-Correct the path.
+Correct the path, or add the file to the project.
 ";
 
 fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
-    for issue in &context.elaborated.issues {
-        let IssueKind::MissingInclude { path, reason } = &issue.kind else {
-            continue;
-        };
-        let message = format!("`{path}` cannot be read: {reason}");
-        out.push(RULE.finding(issue.span, message));
-    }
+    context.issues(&RULE, out, |issue| match &issue.kind {
+        IssueKind::MissingInclude { path, reason } => {
+            Some(format!("`{path}` is not included: {reason}"))
+        }
+        _ => None,
+    });
 }
 
 #[cfg(test)]
 mod tests {
+    use crate::rules::testing::check_files;
 
-    fn found(path: &str, answer: crate::host::Include) -> Vec<(String, String)> {
-        use crate::host::{FileRole, Host, SourceText};
-        let text = format!("title\n.include '{path}'\nR1 a 0 1\nR2 a 0 1\n");
-        let mut host = Host::new(|| std::time::Duration::ZERO);
-        let root = host.add_file(SourceText::new(text.as_str()), FileRole::Top);
-        host.set_include(root, path, answer);
-        let prepared = host.prepare(root);
-        prepared
-            .findings()
-            .iter()
-            .map(|f| {
-                (
-                    f.rule.as_str().to_owned(),
-                    f.span.range.slice(&text).to_owned(),
-                )
-            })
-            .collect()
+    #[test]
+    fn triggers() {
+        check_files(
+            "\
+title
+.include 'lib/none.inc'
+          ^^^^^^^^^^^^ missing-include
+R1 a 0 1k
+C1 a 0 1p
+",
+            &[],
+        );
+        check_files(
+            "title\n.include parts.inc\nR1 a 0 1k\nC1 a 0 1p\n",
+            &[(
+                "parts.inc",
+                "\
+* parts
+.lib more.lib fast
+     ^^^^^^^^ missing-include
+",
+            )],
+        );
     }
 
     #[test]
-    fn stands_on_the_path() {
-        let refused = crate::host::Include::Refused("no such file".to_owned());
-        let want = [("missing-include".to_owned(), "parts.inc".to_owned())];
-        assert_eq!(found("parts.inc", refused), want);
-        assert_eq!(found("parts.inc", crate::host::Include::Unknown), []);
+    fn a_path_of_no_letters_is_a_missing_field() {
+        check_files(
+            "\
+title
+.include ''
+^^^^^^^^ unreadable-card
+R1 a 0 1k
+C1 a 0 1p
+",
+            &[],
+        );
+    }
+
+    #[test]
+    fn near_misses() {
+        check_files(
+            "title\n.include \"parts.inc\"\nR1 a 0 1k\nC1 a 0 1p\n",
+            &[("parts.inc", "* parts\n")],
+        );
+        check_files(
+            "title\n* .include none.inc\n.lib parts.inc fast\nR1 a 0 1k\n",
+            &[(
+                "parts.inc",
+                ".lib fast\nC1 a 0 1p\n.endl\n.lib slow\n.include none.inc\n.endl\n",
+            )],
+        );
     }
 }

@@ -15,6 +15,7 @@ mod unused_model;
 mod unused_parameter;
 mod unused_quiet;
 mod unused_subcircuit;
+mod usage;
 
 use super::Rule;
 

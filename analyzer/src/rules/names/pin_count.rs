@@ -1,4 +1,4 @@
-//! `pin-count`: an instance gives another number of nodes than its subcircuit has pins.
+//! `pin-count`: an instance with another number of nodes than its subcircuit has pins.
 
 use crate::elaborate::IssueKind;
 use crate::finding::{Finding, RuleId, Severity};
@@ -9,7 +9,7 @@ pub static RULE: Rule = Rule {
     id: RuleId("pin-count"),
     family: Family::Names,
     severity: Severity::Error,
-    summary: "an instance gives another number of nodes than its subcircuit has pins",
+    summary: "an instance with another number of nodes than its subcircuit has pins",
     explanation: EXPLANATION,
     text: Some(check),
     screen: None,
@@ -17,24 +17,25 @@ pub static RULE: Rule = Rule {
 
 const EXPLANATION: &str = "\
 ## What it does
-Compares the nodes of every `X` card with the pins of its subcircuit.
+Reports an `X` card that gives more or fewer nodes than its subcircuit has pins.
 
 ## Why it matters
-The instance is connected otherwise than it reads.
+From the first node that is missing on, every pin is connected to something else than was meant.
 
 ## Method and source
-Nodes are matched with pins in order (IBIS-ISS 1.0, IBIS Open Forum, 2011).
+Nodes belong to pins by their order (IBIS-ISS 1.0, IBIS Open Forum, 2011).
 
 ## Limits
-None.
+Two nodes that change places cannot be seen.
 
 ## Example
 ```
-X1 in out buffer
+X1 in out amp
+.subckt amp a y vdd
 ```
 
 ## Fix
-Give as many nodes as the subcircuit has pins.
+Give a node for each pin, in the order of the `.subckt` line.
 ";
 
 fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
@@ -47,61 +48,66 @@ fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
         else {
             continue;
         };
-        let message = format!("{given} nodes are given, subcircuit `{name}` has {wanted} pins");
-        out.push(
-            RULE.finding(issue.span, message)
-                .also_maybe(issue.other, "the subcircuit"),
-        );
+        let nodes = plural(*given, "node");
+        let pins = plural(*wanted, "pin");
+        let message = format!("{nodes} for {pins} of subcircuit `{name}`");
+        let finding = RULE.finding(issue.span, message);
+        out.push(finding.also_maybe(issue.other, "the pins"));
     }
+}
+
+fn plural(count: usize, what: &str) -> String {
+    let ending = if count == 1 { "" } else { "s" };
+    format!("{count} {what}{ending}")
 }
 
 #[cfg(test)]
 mod tests {
-    use crate::rules::testing::check;
+    use crate::rules::testing::{check, findings};
 
     #[test]
     fn triggers() {
         check(
-            r#"title
-X1 a s
+            "\
+title
+X1 a cell
 ^^ pin-count
-R1 a 0 1
-.subckt s p q
-R1 p q 1
+R1 a 0 1k
+.subckt cell a b
+R1 a b 1k
+R2 b 0 1k
 .ends
-"#,
+",
         );
         check(
-            r#"title
-X1 a 0 0 s
-^^ pin-count
-R1 a 0 1
-.subckt s p q
-R1 p q 1
+            "\
+title
+Xlong a b 0 cell
+^^^^^ pin-count
+R1 a b 1k
+R2 b 0 1k
+.subckt cell a b
+R1 a b 1k
 .ends
-"#,
+",
         );
+    }
+
+    #[test]
+    fn numbers_come_first() {
+        let text = "title\nX1 a cell\nR1 a 0 1k\n.subckt cell a b\nR1 a b 1k\n.ends\n";
+        let found = findings(text, "pin-count");
+        assert_eq!(found[0].message, "1 node for 2 pins of subcircuit `cell`");
+        assert_eq!(found[0].related.len(), 1);
     }
 
     #[test]
     fn near_misses() {
         check(
-            r#"title
-X1 a 0 s
-R1 a 0 1
-.subckt s p q
-R1 p q 1
-.ends
-"#,
+            "title\nX1 a 0 cell size=2\nR1 a 0 1k\n.subckt cell a b size=1\nR1 a b size\n.ends\n",
         );
         check(
-            r#"title
-X1 a 0 s r=2
-R1 a 0 1
-.subckt s p q r=1
-R1 p q r
-.ends
-"#,
+            "title\nX1 a 0 cell params: size=2\nR1 a 0 1k\n.subckt cell a b params: size=1\nR1 a b size\n.ends\n",
         );
     }
 }

@@ -1,4 +1,4 @@
-//! `unknown-node-in-mark`: a mark names a node or part that is not there.
+//! `unknown-node-in-mark`: a mark that names a node or part that is not there.
 
 use crate::elaborate::IssueKind;
 use crate::finding::{Finding, RuleId, Severity};
@@ -10,7 +10,7 @@ pub static RULE: Rule = Rule {
     id: RuleId("unknown-node-in-mark"),
     family: Family::Names,
     severity: Severity::Error,
-    summary: "a mark names a node or part that is not there",
+    summary: "a mark that names a node or part that is not there",
     explanation: EXPLANATION,
     text: Some(check),
     screen: None,
@@ -18,24 +18,30 @@ pub static RULE: Rule = Rule {
 
 const EXPLANATION: &str = "\
 ## What it does
-Reports a node, part or terminal named in a mark that the circuit does not have.
+Reports a node, part or instance named by a `block`, `rail`, `tie`, `passive` or `device` mark that the
+scope of the mark does not have.
 
 ## Why it matters
-The port, rail or device that was meant stays unmarked, so nothing certain is said of the block.
+A port, supply or stand-in that leads nowhere is not applied: the block is not the one that was meant,
+so no clean verdict is given for it.
 
 ## Method and source
-Names are looked up in the scope of the mark, by path below it.
+Names are those of the flat circuit, instance path and name joined by dots, seen from the scope in which
+the mark stands. Upper and lower case are the same.
 
 ## Limits
-None.
+Supplies, ties and claims are looked up where a block is marked in their scope. Names in marks that have
+no effect on the small-signal screen are not looked up.
 
 ## Example
 ```
-*~ block amp in=gaet
+*~ block lna in=ant out=drian
+R1 ant gate 10
+R2 drain 0 1k
 ```
 
 ## Fix
-Correct the name.
+Write the name as the cards have it: `out=drain`.
 ";
 
 fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
@@ -43,10 +49,9 @@ fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
         let IssueKind::UnknownNodeInMark { name, nearest } = &issue.kind else {
             continue;
         };
-        let message = format!("no node or part `{name}` is there{}", did_you_mean(nearest));
-        let mut finding = RULE
-            .finding(issue.span, message)
-            .also_maybe(issue.other, "the block");
+        let near = did_you_mean(nearest);
+        let message = format!("no node or part `{name}` where this mark looks for it{near}");
+        let mut finding = RULE.finding(issue.span, message);
         if let Some(nearest) = nearest {
             finding = finding.fix(format!("write `{nearest}`"), issue.span, nearest.clone());
         }
@@ -56,43 +61,47 @@ fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
 
 #[cfg(test)]
 mod tests {
-    use crate::rules::testing::check;
+    use crate::rules::testing::{check, findings, fixed};
 
     #[test]
     fn triggers() {
         check(
-            r#"title
-*~ block amp in=gaet
-                ^^^^ unknown-node-in-mark
-R1 gate 0 10
-C1 gate 0 1p
-"#,
+            "\
+title
+*~ block amp in=gate out=drian:75
+                         ^^^^^ unknown-node-in-mark
+R1 gate drain 1k
+R2 gate 0 1k
+C1 drain 0 1p
+",
         );
         check(
-            r#"title
-*~ device Q7 gm=1m
+            "\
+title
+*~ block amp in=gate
+*~ rail vdd volts=5
+        ^^^ unknown-node-in-mark
+*~ device Q7 gm=10m rpi=1k
           ^^ unknown-node-in-mark
-R1 gate 0 10
-C1 gate 0 1p
-"#,
+R1 gate vcc 1k
+R2 gate 0 1k
+C1 vcc 0 1p
+",
         );
     }
 
     #[test]
+    fn the_fix_replaces_the_word() {
+        let text = "title\n*~ block amp in=gaet\nR1 gate 0 1k\nC1 gate 0 1p\n";
+        let found = findings(text, "unknown-node-in-mark");
+        assert_eq!(fixed(text, &found[0]), [text.replace("gaet", "gate")]);
+    }
+
+    #[test]
     fn near_misses() {
+        check("title\n*~ block amp in=GATE:75 out=R2\nR1 gate b 1k\nR2 b 0 50\n");
         check(
-            r#"title
-*~ block amp in=GATE:75
-R1 gate 0 1k
-C1 gate 0 1p
-"#,
-        );
-        check(
-            r#"title
-*~ block amp in=V1
-V1 gate 0 0
-R1 gate 0 10
-"#,
+            "title\n*~ block amp in=a ports=X1.n\nX1 a cell\nR1 a 0 1k\n.subckt cell a\nR1 a n 1k\nC1 n 0 1p\n.ends\n",
         );
     }
 }

@@ -1,4 +1,4 @@
-//! `stray-continuation`: a `+` line that continues a card across other lines.
+//! `stray-continuation`: a `+` line that is parted from its card.
 
 use crate::finding::{Finding, RuleId, Severity};
 use crate::rules::{Family, Rule, TextContext};
@@ -10,7 +10,7 @@ pub static RULE: Rule = Rule {
     id: RuleId("stray-continuation"),
     family: Family::Syntax,
     severity: Severity::Warning,
-    summary: "a `+` line that continues a card across other lines",
+    summary: "a `+` line that blank lines, comments or marks part from its card",
     explanation: EXPLANATION,
     text: Some(check),
     screen: None,
@@ -18,22 +18,24 @@ pub static RULE: Rule = Rule {
 
 const EXPLANATION: &str = "\
 ## What it does
-Reports a `+` line with blank lines, comments or marks between it and its card.
+Reports a `+` line that continues a card across blank lines, comment lines or marks.
 
 ## Why it matters
-Other programs may read the line differently, or drop it.
+The line is read as a part of the card before it. Other programs may drop it or refuse it, and a reader
+easily takes it for part of something else.
 
 ## Method and source
-squeg continues the card before (common practice differs between programs).
+A line that starts with `+` continues the card before it (IBIS-ISS 1.0, IBIS Open Forum, 2011).
 
 ## Limits
-None.
+Only the first `+` line behind the gap is told. A `+` line with no card before it at all is
+`unreadable-card`.
 
 ## Example
 ```
-R1 a 0
-* note
-+ 50
+R1 in gate
+
++ 4.7
 ```
 
 ## Fix
@@ -44,7 +46,8 @@ fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
     for (file, parse) in &context.program.files {
         for error in &parse.errors {
             if error.kind == SyntaxErrorKind::StrayContinuation {
-                out.push(RULE.finding(Span::new(*file, error.range), error.kind.to_string()));
+                let span = Span::new(*file, error.range);
+                out.push(RULE.finding(span, error.kind.to_string()));
             }
         }
     }
@@ -57,41 +60,31 @@ mod tests {
     #[test]
     fn triggers() {
         check(
-            r#"title
-R1 a 0
-* note
-+ 50
-^ stray-continuation
-R2 a 0 1
-"#,
-        );
-        check(
-            r#"title
+            "\
+title
 R1 a 0
 
-+ 50
++ 1k
 ^ stray-continuation
-R2 a 0 1
-"#,
+C1 a 0 1p
+",
+        );
+        check(
+            "\
+title
+R1 a 0 1k
+C1 a
+*~ rail a volts=5
+  + 0
+  ^ stray-continuation
++ 1p
+",
         );
     }
 
     #[test]
     fn near_misses() {
-        check(
-            r#"title
-R1 a 0
-+ 50
-R2 a 0 1
-"#,
-        );
-        check(
-            r#"title
-R1 a
-+ 0
-+ 50
-R2 a 0 1
-"#,
-        );
+        check("title\nR1 a 0\n+ 1k\nC1 a\n+ 0\n+ 1p\n");
+        check("title\nR1 a 0 1k\n*~ block amp\n*~+ in=a\nC1 a 0 1p\n");
     }
 }

@@ -1,5 +1,6 @@
 //! Values of parts.
 
+mod coupling;
 mod coupling_not_passive;
 mod coupling_over_unity;
 mod farad_or_femto;

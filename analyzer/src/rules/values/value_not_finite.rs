@@ -2,6 +2,7 @@
 
 use crate::elaborate::IssueKind;
 use crate::finding::{Finding, RuleId, Severity};
+use crate::rules::context::bad_marks;
 use crate::rules::{Family, Rule, TextContext};
 
 /// The rule.
@@ -17,33 +18,39 @@ pub static RULE: Rule = Rule {
 
 const EXPLANATION: &str = "\
 ## What it does
-Reports an expression whose value is infinite or not a number.
+Reports a value whose expression gives infinity or no number at all.
 
 ## Why it matters
-The part is missing from the circuit.
+The part is missing from the circuit, so no clean verdict is given for a block that holds it.
 
 ## Method and source
-Double-precision arithmetic.
+Expressions are computed in double precision (IEEE 754): a division by zero gives infinity, zero by zero, the
+root of a negative number and the like give no number.
 
 ## Limits
-None.
+Told where the value is used, which may be far from the parameter at fault. A value in a mark is
+told by `unknown-mark`.
 
 ## Example
 ```
-R1 a 0 '1/0'
+.param n=0
+R1 a 0 '1k/n'
 ```
 
 ## Fix
-Correct the expression.
+Correct the expression or the parameter it depends on.
 ";
 
 fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
+    let marks = bad_marks(context);
     for issue in &context.elaborated.issues {
         let IssueKind::ValueNotFinite { text } = &issue.kind else {
             continue;
         };
-        let message = format!("`{text}` has no finite value");
-        out.push(RULE.finding(issue.span, message));
+        if marks.around(issue.span).is_none() {
+            let inner = text.trim_matches(['\'', '{', '}', '"']);
+            out.push(RULE.finding(issue.span, format!("`{inner}` gives no finite number")));
+        }
     }
 }
 
@@ -54,37 +61,31 @@ mod tests {
     #[test]
     fn triggers() {
         check(
-            r#"title
-R1 a 0 '1/0'
-       ^^^^^ value-not-finite
-R2 a 0 1
-R3 a 0 1
-"#,
+            "\
+title
+.param n=0
+R1 a 0 '1k/n'
+       ^^^^^^ value-not-finite
+R2 a 0 1k
+C1 a 0 1p
+",
         );
         check(
-            r#"title
-.param x='sqrt(-1)'
-R1 a 0 x
-       ^ value-not-finite
-R2 a 0 1
-R3 a 0 1
-"#,
+            "\
+title
+X1 a cell w='sqrt(-1)'
+            ^^^^^^^^^^ value-not-finite
+R2 a 0 1k
+.subckt cell a w=1
+R1 a 0 w
+.ends
+",
         );
     }
 
     #[test]
     fn near_misses() {
-        check(
-            r#"title
-R1 a 0 '1/2'
-R2 a 0 1
-"#,
-        );
-        check(
-            r#"title
-R1 a 0 'sqrt(4)'
-R2 a 0 1
-"#,
-        );
+        check("title\n.param n=0 big='1/n'\nR1 a 0 'n ? big : 1k'\nC1 a 0 1p\n");
+        check("title\nR1 a 0 1e300\nC1 a 0 '1e-300/1e10'\n");
     }
 }

@@ -27,7 +27,8 @@ The part does nothing; a node name is most often wrong.
 The words of the card.
 
 ## Limits
-Ground has several names; they count as one.
+Ground has several names; they count as one. An ideal voltage source with both ends on one node is
+`source-loop`, an error.
 
 ## Example
 ```
@@ -51,6 +52,9 @@ fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
                 CardKind::VoltageControlled { nodes, .. } => [nodes[0], nodes[1]],
                 _ => continue,
             };
+            if is_voltage_branch(parse.tree.slice(card.name.range)) {
+                continue;
+            }
             let [a, b] = two.map(|word| parse.tree.slice(word.range));
             let ground = crate::circuit::is_ground(a) && crate::circuit::is_ground(b);
             if a.eq_ignore_ascii_case(b) || ground {
@@ -60,6 +64,12 @@ fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
             }
         }
     }
+}
+
+/// Whether the card fixes a voltage: with both ends on one node it is a loop of its own, which
+/// `source-loop` reports.
+fn is_voltage_branch(name: &str) -> bool {
+    name.starts_with(['V', 'v', 'E', 'e', 'H', 'h'])
 }
 
 #[cfg(test)]

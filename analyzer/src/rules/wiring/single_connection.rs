@@ -1,11 +1,14 @@
 //! `single-connection`: a node that only one terminal touches.
 
+use super::current_source_cut;
 use crate::circuit::is_ground;
-use crate::elaborate::{Folded, Program, Scope};
+use crate::elaborate::{CardRef, Folded, Scope};
 use crate::finding::{Finding, RuleId, Severity};
+use crate::rules::spans::SpanMap;
+use crate::rules::words::{unread_words, words_beside};
 use crate::rules::{Family, Rule, TextContext};
-use crate::syntax::StatementKind;
-use crate::text::Span;
+use crate::syntax::{Card, CardKind, Mark};
+use crate::text::{Span, TextRange};
 use std::collections::{HashMap, HashSet};
 
 /// The rule.
@@ -21,144 +24,258 @@ pub static RULE: Rule = Rule {
 
 const EXPLANATION: &str = "\
 ## What it does
-Reports a node word that stands on one terminal only in its scope.
+Reports a node name that stands on one terminal of one card of its scope and nowhere else.
 
 ## Why it matters
-It is most often a misspelt name: two nodes where one was meant.
+No current can flow into a terminal that leads nowhere. Mostly the name is misspelt, and the part it was to
+be connected to hangs in the air as well.
 
 ## Method and source
-Terminals are counted per scope; sensing terminals count.
+Terminals are counted by name in each scope, those that sense the voltage of an E or G source included.
+Common practice.
 
 ## Limits
-Pins, global nodes, ground and nodes that a mark names are not reported.
+Pins of the subcircuit, global nodes, ground, and nodes that a mark of the scope names are not reported:
+a port, rail or tie connects them. A name on a card that cannot be read counts as a connection. A
+node fed by nothing but a current source is `current-source-cut`.
 
 ## Example
 ```
-R1 in gaet 10
-C1 gate 0 1p
+R1 gate out 10
+R2 oot 0 1k
 ```
 
 ## Fix
-Correct the name, or name the node in a mark when it is a port.
+Correct the name. If the node is meant to be open, say so: `*~ tie NODE to=open`.
 ";
 
 fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
-    let program = context.program;
-    for scope in &program.scopes {
-        let named = words_of_marks(program, scope);
-        let pins: Vec<Folded> = scope
-            .pins
-            .iter()
-            .map(|(name, _)| Folded::new(name))
-            .collect();
-        let mut count: HashMap<Folded, (usize, Span)> = HashMap::new();
-        let mut order: Vec<Folded> = Vec::new();
+    let cuts = current_source_cut::lone_nodes(context);
+    for dangling in dangling(context) {
+        if cuts.around(dangling.node).is_some() {
+            continue;
+        }
+        let (name, part) = (context.text(dangling.node), context.text(dangling.part));
+        let message = format!("node `{name}` is connected to one terminal only, of `{part}`");
+        let mut finding = RULE.finding(dangling.node, message);
+        finding.node = Some(name.to_owned());
+        out.push(finding);
+    }
+}
+
+/// Places of nodes that one terminal touches.
+pub(super) fn places(context: &TextContext<'_>) -> SpanMap<()> {
+    let mut places = SpanMap::new();
+    for dangling in dangling(context) {
+        places.insert(dangling.node, ());
+    }
+    places
+}
+
+/// A node with one terminal: its place, and that of the part's name.
+struct Dangling {
+    node: Span,
+    part: Span,
+}
+
+/// The terminals counted so far at one node.
+struct Count {
+    terminals: usize,
+    first: Dangling,
+}
+
+fn dangling(context: &TextContext<'_>) -> Vec<Dangling> {
+    let unread = unread_words(context.program);
+    let mut found = Vec::new();
+    for scope in &context.program.scopes {
+        let mut order = Vec::new();
+        let mut counts: HashMap<String, Count> = HashMap::new();
         for card in &scope.cards {
-            let Some(parse) = program.file(card.file) else {
-                continue;
-            };
-            let statement = parse.statements.get(card.statement as usize);
-            let Some(StatementKind::Card(element)) = statement.map(|s| &s.kind) else {
-                continue;
-            };
-            for word in element.kind.nodes() {
-                let name = Folded::new(parse.tree.slice(word.range));
-                let span = Span::new(card.file, word.range);
-                let entry = count.entry(name.clone()).or_insert_with(|| {
-                    order.push(name);
-                    (0, span)
-                });
-                entry.0 += 1;
+            count(context, *card, &mut counts, &mut order);
+        }
+        let named = named(context, scope);
+        for name in order {
+            let taken = named.contains(&name) || unread.contains(&name);
+            match counts.remove(&name) {
+                Some(count) if count.terminals == 1 && !taken => found.push(count.first),
+                _ => {}
             }
         }
-        for name in order {
-            let Some((1, span)) = count.get(&name) else {
-                continue;
-            };
-            let known = is_ground(name.as_str())
-                || pins.contains(&name)
-                || program.globals.contains_key(&name)
-                || named.contains(&name);
-            if !known {
-                let written = context.text(*span).to_owned();
-                let message = format!("node `{written}` is touched by this terminal only");
-                let mut finding = RULE.finding(*span, message);
-                finding.node = Some(written);
-                out.push(finding);
+    }
+    found
+}
+
+/// Counts the terminals of one card; new names go to `order`.
+fn count(
+    context: &TextContext<'_>,
+    card_ref: CardRef,
+    counts: &mut HashMap<String, Count>,
+    order: &mut Vec<String>,
+) {
+    let Some(card) = context.card(card_ref) else {
+        return;
+    };
+    for word in card.kind.nodes() {
+        let name = context.program.text(card_ref.file, word.range);
+        let lower = name.to_ascii_lowercase();
+        match counts.get_mut(&lower) {
+            Some(count) => count.terminals += 1,
+            None => {
+                let first = Dangling {
+                    node: Span::new(card_ref.file, word.range),
+                    part: Span::new(card_ref.file, card.name.range),
+                };
+                order.push(lower.clone());
+                counts.insert(
+                    lower,
+                    Count {
+                        terminals: 1,
+                        first,
+                    },
+                );
             }
         }
     }
 }
 
-/// All words and values of a scope's marks, taken apart at commas and colons.
-fn words_of_marks(program: &Program, scope: &Scope) -> HashSet<Folded> {
-    let mut words = HashSet::new();
-    for card in &scope.marks {
-        let Some(parse) = program.file(card.file) else {
-            continue;
-        };
-        let statement = parse.statements.get(card.statement as usize);
-        let Some(StatementKind::Mark(mark)) = statement.map(|s| &s.kind) else {
-            continue;
-        };
-        let ranges = mark.words.iter().map(|word| word.range);
-        let values = mark
-            .params
-            .iter()
-            .flat_map(|p| [p.key.range, p.value.range]);
-        for range in ranges.chain(values) {
-            let pieces = parse.tree.slice(range).split([',', ':']);
-            words.extend(pieces.map(Folded::new));
+/// Names, in lower case, that are connected without a card: pins, globals, ground, what a mark
+/// names, and what stands in the expressions of sources that are not computed.
+fn named(context: &TextContext<'_>, scope: &Scope) -> HashSet<String> {
+    let program = context.program;
+    let mut names: HashSet<String> = HashSet::new();
+    names.extend(scope.pins.iter().map(|(pin, _)| pin.to_ascii_lowercase()));
+    for mark_ref in &scope.marks {
+        if let Some(mark) = context.mark(*mark_ref) {
+            let text = |range| program.text(mark_ref.file, range);
+            mark_names(mark, text, &mut names);
         }
     }
-    words
+    for card_ref in &scope.cards {
+        let Some(card) = context.card(*card_ref) else {
+            continue;
+        };
+        for word in card.kind.nodes() {
+            let name = program.text(card_ref.file, word.range);
+            let global = program.globals.contains_key(&Folded::new(name));
+            if global || is_ground(name) {
+                names.insert(name.to_ascii_lowercase());
+            }
+        }
+        if matches!(card.kind, CardKind::NotComputed { .. }) {
+            names.extend(hidden_words(context, *card_ref, card));
+        }
+    }
+    names
+}
+
+/// `v(n1)` in the expression of a nonlinear source: every word beside the part's own nodes.
+fn hidden_words(context: &TextContext<'_>, card_ref: CardRef, card: &Card) -> Vec<String> {
+    let found = context.program.file(card_ref.file).and_then(|parse| {
+        let statement = parse.statements.get(card_ref.statement as usize)?;
+        Some((parse, statement.item as usize))
+    });
+    let Some((parse, item)) = found else {
+        return Vec::new();
+    };
+    let mut own = vec![card.name.range];
+    own.extend(card.kind.nodes().iter().map(|word| word.range));
+    own.extend(card.params.iter().map(|param| param.key.range));
+    words_beside(parse, item, &own)
+}
+
+/// All names in a mark, ports without their ohms.
+fn mark_names<'t>(mark: &Mark, text: impl Fn(TextRange) -> &'t str, names: &mut HashSet<String>) {
+    names.extend(
+        mark.words
+            .iter()
+            .map(|w| text(w.range).to_ascii_lowercase()),
+    );
+    for param in &mark.params {
+        names.insert(text(param.key.range).to_ascii_lowercase());
+        for piece in text(param.value.range).split(',') {
+            let name = piece.split(':').next().unwrap_or(piece);
+            names.insert(name.trim().to_ascii_lowercase());
+        }
+    }
 }
 
 #[cfg(test)]
 mod tests {
-    use crate::rules::testing::check;
+    use crate::rules::testing::{check, findings};
 
     #[test]
     fn triggers() {
         check(
-            r#"title
-R1 in gaet 10
-      ^^^^ single-connection
-R2 in 0 10
-C1 gate 0 1p
-   ^^^^ single-connection
-   ^^^^ no-dc-path
-"#,
+            "\
+title
+V1 gate 0 1
+R1 gate out 10
+        ^^^ single-connection
+R2 oot 0 1k
+   ^^^ single-connection
+",
         );
         check(
-            r#"title
-R1 a 0 1
-X1 a s
-.subckt s p
-R1 p q 1
-     ^ single-connection
+            "\
+title
+R1 a 0 10
+G1 a 0 sense 0 10m
+       ^^^^^ single-connection
+.subckt cell p
+R1 p 0 1k
+R2 p inner 1k
+     ^^^^^ single-connection
 .ends
-"#,
+",
         );
     }
 
     #[test]
+    fn the_part_is_named() {
+        let text = "title\nV1 a 0 1\nRload a B 1k\n";
+        let found = findings(text, "single-connection");
+        assert_eq!(
+            found[0].message,
+            "node `B` is connected to one terminal only, of `Rload`"
+        );
+        assert_eq!(found[0].node.as_deref(), Some("B"));
+    }
+
+    #[test]
     fn near_misses() {
+        check("title\nR1 a 0 1k\nG1 0 A a 0 10m\n");
+        check("title\n*~ block amp in=A:75 ports=b,c:10\nR1 a b 1k\nR2 c 0 1k\n");
         check(
-            r#"title
-*~ block amp in=a out=b:75
-R1 a b 1
-"#,
+            "title\n*~ block amp in=a\n*~ tie b to=open\n*~ rail c volts=5\nR1 a b 1k\nR2 c a 1k\n",
         );
         check(
-            r#"title
-R1 a 0 1
-X1 a 0 s
-.global q
-.subckt s p u
-R1 p q 1
-.ends
-"#,
+            "title\n.global vdd\nR1 a vdd 1k\nR2 a GND 1k\nX1 a cell\n.subckt cell in\nR1 in vdd 1k\n.ends\n",
+        );
+        check("title\nR1 a 0 1k\nR2 a b 1k\nE1 c 0 vol='2*v(b)'\nR3 c 0 1k\n");
+    }
+
+    #[test]
+    fn a_source_that_is_not_computed_has_nodes_too() {
+        check(
+            "\
+title
+R1 a 0 1k
+E1 open a vol='2*v(a)'
+   ^^^^ single-connection
+",
+        );
+    }
+
+    #[test]
+    fn a_card_that_cannot_be_read_connects() {
+        check(
+            "\
+title
+V1 a 0 1
+R1 a b 10
+R2 b 0
+^^ unreadable-card
+",
         );
     }
 }

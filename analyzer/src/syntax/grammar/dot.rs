@@ -125,6 +125,8 @@ fn paths(tree: &Tree, fields: &[Field]) -> Vec<Word> {
             }),
             _ => None,
         })
+        // `''` names no file.
+        .filter(|word| !word.range.is_empty())
         .collect()
 }
 
