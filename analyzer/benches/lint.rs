@@ -7,6 +7,10 @@ mod amplifiers;
 use criterion::{BenchmarkId, Criterion, Throughput, criterion_group, criterion_main};
 use squeg_analyzer::cancel::Cancel;
 use squeg_analyzer::host::{FileRole, Host, SourceText};
+use squeg_analyzer::stability::{
+    Solver, active_sources, count, driving_points, natural_modes, participation, two_port_factors,
+};
+use squeg_analyzer::sweep::frequency_grid;
 use std::hint::black_box;
 use std::time::Duration;
 
@@ -64,9 +68,60 @@ fn screen(criterion: &mut Criterion) {
     group.finish();
 }
 
+/// The parts of one screen, on the amplifier of 63 unknowns and one of about 190.
+fn parts(criterion: &mut Criterion) {
+    let texts = [
+        (63, amplifiers::amplifier_63()),
+        (200, amplifiers::amplifier_200(0)),
+    ];
+    for (unknowns, text) in &texts {
+        let mut host = Host::new(|| Duration::ZERO);
+        let file = host.add_file(SourceText::new(text.as_str()), FileRole::Top);
+        let prepared = host.prepare(file);
+        let circuit = prepared.circuits().next().expect("a block");
+        let active = active_sources(circuit, &[]);
+        let solver = Solver::with_active(circuit, &active).expect("a system");
+        let stop = || false;
+        let on = natural_modes(&solver, false, 1500, &stop).expect("modes");
+        let off = natural_modes(&solver, true, 1500, &stop).expect("modes");
+        let seeds: Vec<(f64, f64)> = on.list.iter().map(|m| (m.hz(), m.damping())).collect();
+        let grid = frequency_grid(1e3, 1e11, &seeds);
+        let mut group = criterion.benchmark_group(format!("{unknowns} unknowns"));
+        group.bench_function("text to findings", |b| {
+            b.iter(|| {
+                let mut host = Host::new(|| Duration::ZERO);
+                let file = host.add_file(SourceText::new(text.as_str()), FileRole::Top);
+                black_box(host.prepare(file).findings().len())
+            });
+        });
+        group.bench_function("active sources", |b| {
+            b.iter(|| black_box(active_sources(circuit, &[])));
+        });
+        group.bench_function("system, structure, plan", |b| {
+            b.iter(|| black_box(Solver::with_active(circuit, &active).is_ok()));
+        });
+        group.bench_function("modes", |b| {
+            b.iter(|| black_box(natural_modes(&solver, false, 1500, &stop).is_ok()));
+        });
+        group.bench_function("shares", |b| {
+            b.iter(|| black_box(participation(&solver, circuit, &on.list).is_ok()));
+        });
+        group.bench_function("count", |b| {
+            b.iter(|| black_box(count(&solver, Some(&on), Some(&off), &stop).is_ok()));
+        });
+        group.bench_function(format!("driving points, {} frequencies", grid.len()), |b| {
+            b.iter(|| black_box(driving_points(&solver, &grid, None, &stop).is_ok()));
+        });
+        group.bench_function(format!("two-port, {} frequencies", grid.len()), |b| {
+            b.iter(|| black_box(two_port_factors(&solver, circuit, &grid).is_ok()));
+        });
+        group.finish();
+    }
+}
+
 criterion_group! {
     name = benches;
     config = Criterion::default().sample_size(10).warm_up_time(Duration::from_millis(500)).measurement_time(Duration::from_secs(3));
-    targets = read, screen
+    targets = read, screen, parts
 }
 criterion_main!(benches);

@@ -5,6 +5,7 @@ use super::accepted::{accept, unused};
 use super::fingerprint::fingerprint;
 use super::report::BlockReport;
 use super::source::Host;
+use crate::circuit::Circuit;
 use crate::elaborate::{Elaborated, IncludeRequest, Limits, Program, elaborate_blocks};
 use crate::finding::Finding;
 use crate::rules::{TextContext, text_findings};
@@ -98,6 +99,11 @@ impl Prepared {
     /// Findings of the text before any was accepted.
     pub(super) fn raw_findings(&self) -> &[Finding] {
         &self.raw
+    }
+
+    /// The flat circuits of the blocks, in the order of the text.
+    pub fn circuits(&self) -> impl Iterator<Item = &Circuit> {
+        self.elaborated.blocks.iter().map(|block| &block.circuit)
     }
 
     /// Whether any block is marked.

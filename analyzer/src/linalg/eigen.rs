@@ -2,15 +2,15 @@
 //!
 //! Method: C = E F^T with rank(C) columns, then the matrix T = F^T (G + s0 C)^-1 E, whose
 //! eigenvalues mu give s = s0 - 1/mu. Eigenvalues of T that are exactly zero stand for modes at
-//! infinity, and those that are exactly 1/s0 for modes at the origin. Whether such exist, and how
-//! many, is decided in exact arithmetic (see `exact`); they are then removed by rank
-//! factorisations (A = E F has the nonzero eigenvalues of F E) in which every entry that is
-//! exactly zero is set to zero in floating point too. So no artefact of rounding is ever sorted
-//! out by its size.
+//! infinity, and those that are exactly 1/s0 for modes at the origin. How many there are is decided
+//! in exact arithmetic (see `exact`). Where so many eigenvalues stand far apart from the rest, they
+//! are the ones; otherwise they are removed by rank factorisations (A = E F has the nonzero
+//! eigenvalues of F E) in which every entry that is exactly zero is set to zero in floating point
+//! too. So the number of artefacts of rounding is never judged by their size.
 
 use super::elimination::{Elimination, Scalar, Step};
 use super::error::NumericError;
-use super::exact::{ExactEntry, Field61, SparseFactors, combine};
+use super::exact::{ExactEntry, Field61, SparseFactors, Structure, combine};
 use super::exact_dense::FieldMatrix;
 use super::plan::Plan;
 use super::values::Values;
@@ -30,7 +30,8 @@ pub struct Modes {
 }
 
 /// All finite modes of the pencil. Delayed parts of `values` are not seen here: the caller must
-/// not have any. `plan` must serve `values`; `g` and `c` are the same numbers exactly.
+/// not have any. `plan` must serve `values`; `g` and `c` are the same numbers exactly, and
+/// `structure` is theirs.
 ///
 /// # Errors
 /// [`NumericError::SingularPoint`] when the shift is a mode, [`NumericError::NoConvergence`] when
@@ -40,9 +41,9 @@ pub fn finite_modes(
     values: &Values,
     g: &[ExactEntry],
     c: &[ExactEntry],
+    structure: &Structure,
 ) -> Result<Modes, NumericError> {
-    let n = plan.n();
-    let rank = RankPair::new(n, c, values);
+    let rank = RankPair::new(plan.n(), c, values);
     let size = rank.columns.len();
     if size == 0 {
         return Ok(Modes {
@@ -50,8 +51,47 @@ pub fn finite_modes(
             at_zero: 0,
         });
     }
-    let exact = rank.exact_transfer(n, g, c)?;
     let float = rank.transfer(plan, values)?;
+    match by_size(&float, structure)? {
+        Some(modes) => Ok(modes),
+        None => by_twins(float, rank.exact_transfer(plan.n(), g, c)?),
+    }
+}
+
+/// Least ratio between the eigenvalues that are kept and those that stand for an exact zero.
+const GAP: f64 = 1e6;
+
+/// The modes when what is exactly zero stands far from the rest: how many there are of either kind
+/// is known exactly, so only the gap is asked of the doubles. `None` without such a gap.
+fn by_size(float: &DMatrix<f64>, structure: &Structure) -> Result<Option<Modes>, NumericError> {
+    let (finite, at_zero) = (structure.finite_modes, structure.zero_modes);
+    let Some(infinite) = float.nrows().checked_sub(finite) else {
+        return Ok(None);
+    };
+    let mut mu = eigenvalues(float.clone())?;
+    mu.sort_by(|a, b| a.norm_sqr().total_cmp(&b.norm_sqr()));
+    if !has_gap(&mu, infinite) {
+        return Ok(None);
+    }
+    let mut s: Vec<Complex64> = mu[infinite..].iter().map(|mu| SHIFT - mu.inv()).collect();
+    s.sort_by(|a, b| a.norm_sqr().total_cmp(&b.norm_sqr()));
+    if !has_gap(&s, at_zero) {
+        return Ok(None);
+    }
+    let nonzero = s.split_off(at_zero);
+    Ok(Some(Modes { nonzero, at_zero }))
+}
+
+/// Whether the `zeros` smallest of a rising list lie far below the others.
+fn has_gap(rising: &[Complex64], zeros: usize) -> bool {
+    match (zeros.checked_sub(1).map(|k| rising[k]), rising.get(zeros)) {
+        (Some(zero), Some(kept)) => zero.norm() * GAP < kept.norm(),
+        _ => true,
+    }
+}
+
+/// The modes by removing exact zeros with rank factorisations, in doubles and in the field at once.
+fn by_twins(float: DMatrix<f64>, exact: FieldMatrix) -> Result<Modes, NumericError> {
     let (float, exact) = regular_part(float, exact);
     let shift = Field61::from_f64(SHIFT).unwrap_or(Field61::ONE);
     let from_infinity = exact.rows;
@@ -116,10 +156,18 @@ impl Scalar for Twin {
         };
         Self { float, exact }
     }
+    /// The pivot, and its inverse in the field.
+    type Divisor = Self;
+    fn divisor(self) -> Self {
+        Self {
+            float: self.float,
+            exact: self.exact.inverse(),
+        }
+    }
     fn over(self, pivot: Self) -> Self {
         Self {
             float: self.float / pivot.float,
-            exact: self.exact * pivot.exact.inverse(),
+            exact: self.exact * pivot.exact,
         }
     }
     fn is_droppable(&self) -> bool {

@@ -11,8 +11,12 @@ pub(crate) trait Scalar: Copy {
     fn zero() -> Self;
     /// `self - f * u`.
     fn minus_product(self, f: Self, u: Self) -> Self;
+    /// What a division by one pivot, done many times, needs.
+    type Divisor: Copy;
+    /// `self` as a divisor.
+    fn divisor(self) -> Self::Divisor;
     /// `self / pivot`.
-    fn over(self, pivot: Self) -> Self;
+    fn over(self, pivot: Self::Divisor) -> Self;
     /// Whether the entry may be dropped from the structure.
     fn is_droppable(&self) -> bool;
 }
@@ -24,6 +28,10 @@ impl Scalar for num_complex::Complex64 {
     #[inline]
     fn minus_product(self, f: Self, u: Self) -> Self {
         self - f * u
+    }
+    type Divisor = Self;
+    fn divisor(self) -> Self {
+        self
     }
     #[inline]
     fn over(self, pivot: Self) -> Self {
@@ -117,11 +125,14 @@ impl<S: Scalar> Elimination<S> {
         for cell in &upper {
             remove(&mut self.columns[cell.index as usize], row);
         }
+        let divisors: Vec<S::Divisor> = (0..self.stride)
+            .map(|q| self.arena[pivot as usize + q].divisor())
+            .collect();
         for &cell in &lower {
             remove(&mut self.rows[cell.index as usize], column);
-            for q in 0..self.stride {
+            for (q, divisor) in divisors.iter().enumerate() {
                 let at = cell.value as usize + q;
-                self.arena[at] = self.arena[at].over(self.arena[pivot as usize + q]);
+                self.arena[at] = self.arena[at].over(*divisor);
             }
             self.update_row(cell, &upper);
         }

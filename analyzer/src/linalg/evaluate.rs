@@ -6,7 +6,9 @@ use crate::linalg::kernel::{Lane, Lanes};
 use crate::linalg::plan::{Core, Plan};
 use crate::linalg::program::NONE;
 use crate::linalg::values::Values;
-use crate::linalg::workspace::{Patch, Stage, Workspace, on_lanes};
+use crate::linalg::workspace::{
+    GROWTH_LIMIT, Patch, ROUGH_GROWTH_LIMIT, Stage, Workspace, on_lanes,
+};
 use num_complex::Complex64;
 use std::sync::Arc;
 
@@ -51,6 +53,7 @@ impl Plan {
         planned(core, values)?;
         ws.stage = Stage::Empty;
         ws.used = s.len();
+        ws.limit = GROWTH_LIMIT;
         ws.patches.fill_with(|| None);
         for (term, &(_, slot)) in ws.slopes.iter_mut().zip(&core.slope_terms) {
             term.1 = values.c[slot as usize];
@@ -74,6 +77,31 @@ impl Plan {
         ws: &mut Workspace,
     ) -> Result<(), NumericError> {
         self.factor(values, s, ws)?;
+        self.repair(values, s, ws)
+    }
+
+    /// As [`Plan::factor_sound`] for a step of an iteration that corrects itself: lanes up to
+    /// [`ROUGH_GROWTH_LIMIT`] are not repaired.
+    ///
+    /// # Errors
+    /// As [`Plan::factor_sound`].
+    pub fn factor_rough(
+        &self,
+        values: &Values,
+        s: &[Complex64],
+        ws: &mut Workspace,
+    ) -> Result<(), NumericError> {
+        self.factor(values, s, ws)?;
+        ws.limit = ROUGH_GROWTH_LIMIT;
+        self.repair(values, s, ws)
+    }
+
+    fn repair(
+        &self,
+        values: &Values,
+        s: &[Complex64],
+        ws: &mut Workspace,
+    ) -> Result<(), NumericError> {
         for (lane, &s) in s.iter().enumerate() {
             if !ws.is_raw_sound(lane) {
                 ws.patches[lane] = Some(Box::new(self.patch(values, s)?));

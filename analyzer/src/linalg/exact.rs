@@ -41,8 +41,13 @@ impl Scalar for Field61 {
     fn minus_product(self, f: Self, u: Self) -> Self {
         self - f * u
     }
-    fn over(self, pivot: Self) -> Self {
-        self * pivot.inverse()
+    /// The inverse: it costs as much as a hundred products.
+    type Divisor = Self;
+    fn divisor(self) -> Self {
+        self.inverse()
+    }
+    fn over(self, inverse: Self) -> Self {
+        self * inverse
     }
     fn is_droppable(&self) -> bool {
         *self == Field61::ZERO
@@ -67,13 +72,63 @@ pub fn structure(n: usize, g: &[ExactEntry], c: &[ExactEntry]) -> Structure {
         };
     }
     let rank = RankFactors::new(n, c);
-    let t = transfer(&factors, &rank);
-    let (finite_modes, zero_modes) = nonzero_modes(t, s0);
+    let at_infinity = modes_at_infinity(n, &combine(n, g, c, s0), &rank);
+    let at_zero = modes_at_zero(n, g, c);
+    let (finite_modes, zero_modes) = match (at_infinity, at_zero) {
+        (Some(infinite), Some(zero)) => (rank.e.len() - infinite, zero),
+        // Chains: only the dense reduction tells how long they are.
+        _ => nonzero_modes(transfer(&factors, &rank), s0),
+    };
     Structure {
         finite_modes,
         zero_modes,
         ..Structure::default()
     }
+}
+
+/// How often T = F^T (G + s0 C)^-1 E has the eigenvalue zero, each a mode at infinity; `None` when
+/// that eigenvalue has chains. The bordered matrix [G + s0 C, E; F^T, 0] has the nullity of T, and
+/// the tails of its null vectors are those of T; without chains the products of left and right ones
+/// form a regular matrix.
+fn modes_at_infinity(n: usize, at_shift: &[ExactEntry], rank: &RankFactors) -> Option<usize> {
+    let r = rank.e.len();
+    let mut bordered = at_shift.to_vec();
+    for (k, (e, f)) in rank.e.iter().zip(&rank.f).enumerate() {
+        let border = (n + k) as u32;
+        bordered.extend(e.iter().map(|&(row, v)| (row, border, v)));
+        bordered.extend(f.iter().map(|&(column, v)| (border, column, v)));
+    }
+    let factors = SparseFactors::new(n + r, &bordered);
+    let right = factors.null_vectors();
+    let left = factors.left_null_vectors();
+    let d = right.len();
+    let mut product = FieldMatrix::zero(d, d);
+    for (i, y) in left.iter().enumerate() {
+        for (j, x) in right.iter().enumerate() {
+            let tails = y[n..].iter().zip(&x[n..]);
+            product.set(i, j, tails.fold(Field61::ZERO, |sum, (y, x)| sum + *y * *x));
+        }
+    }
+    (product.rank_factors().0.columns == d).then_some(d)
+}
+
+/// Multiplicity of the mode s = 0; `None` when it has chains. Without chains the null vectors of G
+/// make y^T C x regular.
+fn modes_at_zero(n: usize, g: &[ExactEntry], c: &[ExactEntry]) -> Option<usize> {
+    let factors = SparseFactors::new(n, &merge(n, g.to_vec()));
+    let right = factors.null_vectors();
+    let left = factors.left_null_vectors();
+    let d = right.len();
+    let mut product = FieldMatrix::zero(d, d);
+    for (i, y) in left.iter().enumerate() {
+        for (j, x) in right.iter().enumerate() {
+            let terms = c
+                .iter()
+                .map(|&(row, column, v)| y[row as usize] * v * x[column as usize]);
+            product.set(i, j, terms.fold(Field61::ZERO, |sum, term| sum + term));
+        }
+    }
+    (product.rank_factors().0.columns == d).then_some(d)
 }
 
 /// G + s C as one list, repeats summed, zeros dropped.
@@ -102,6 +157,8 @@ fn merge(n: usize, mut all: Vec<ExactEntry>) -> Vec<ExactEntry> {
 pub(crate) struct SparseFactors {
     n: usize,
     pub(crate) steps: Vec<Step>,
+    /// One over the pivot of each step.
+    inverses: Vec<Field61>,
     arena: Vec<Field61>,
 }
 
@@ -119,9 +176,12 @@ impl SparseFactors {
                 None => break,
             }
         }
+        let pivots = steps.iter().map(|step| active.arena[step.pivot as usize]);
+        let inverses = pivots.map(Field61::inverse).collect();
         Self {
             n,
             steps,
+            inverses,
             arena: active.arena,
         }
     }
@@ -141,55 +201,82 @@ impl SparseFactors {
                 }
             }
         }
-        for step in self.steps.iter().rev() {
+        for (step, inverse) in self.steps.iter().zip(&self.inverses).rev() {
             let mut sum = b[step.row as usize];
             for u in &step.upper {
                 sum = sum - self.value(u.value) * x[u.index as usize];
             }
-            x[step.column as usize] = sum * self.value(step.pivot).inverse();
+            x[step.column as usize] = sum * *inverse;
         }
     }
 
     /// Columns in the span of the right null vectors.
     fn null_columns(&self) -> Vec<u32> {
-        let mut free = vec![true; self.n];
-        for step in &self.steps {
-            free[step.column as usize] = false;
-        }
-        self.support(&free, |random, x| {
-            for step in self.steps.iter().rev() {
-                let mut sum = Field61::ZERO;
-                for u in &step.upper {
-                    sum = sum - self.value(u.value) * x[u.index as usize];
-                }
-                x[step.column as usize] = sum * self.value(step.pivot).inverse();
-            }
-            random
-        })
+        self.support(&self.free(|step| step.column), |x| self.complete_right(x))
     }
 
     /// Rows in the span of the left null vectors.
     fn null_rows(&self) -> Vec<u32> {
+        self.support(&self.free(|step| step.row), |y| self.complete_left(y))
+    }
+
+    /// A basis of the right null space, one vector per column without a pivot.
+    fn null_vectors(&self) -> Vec<Vec<Field61>> {
+        self.basis(&self.free(|step| step.column), |x| self.complete_right(x))
+    }
+
+    /// A basis of the left null space, one vector per row without a pivot.
+    fn left_null_vectors(&self) -> Vec<Vec<Field61>> {
+        self.basis(&self.free(|step| step.row), |y| self.complete_left(y))
+    }
+
+    /// Which rows or columns no step has used.
+    fn free(&self, used: impl Fn(&Step) -> u32) -> Vec<bool> {
         let mut free = vec![true; self.n];
         for step in &self.steps {
-            free[step.row as usize] = false;
+            free[used(step) as usize] = false;
         }
-        self.support(&free, |random, y| {
-            for step in self.steps.iter().rev() {
-                let mut sum = Field61::ZERO;
-                for l in &step.lower {
-                    sum = sum - self.value(l.value) * y[l.index as usize];
-                }
-                y[step.row as usize] = sum;
+        free
+    }
+
+    /// Completes the free places of x so that A x = 0.
+    fn complete_right(&self, x: &mut [Field61]) {
+        for (step, inverse) in self.steps.iter().zip(&self.inverses).rev() {
+            let mut sum = Field61::ZERO;
+            for u in &step.upper {
+                sum = sum - self.value(u.value) * x[u.index as usize];
             }
-            random
-        })
+            x[step.column as usize] = sum * *inverse;
+        }
+    }
+
+    /// Completes the free places of y so that y^T A = 0.
+    fn complete_left(&self, y: &mut [Field61]) {
+        for step in self.steps.iter().rev() {
+            let mut sum = Field61::ZERO;
+            for l in &step.lower {
+                sum = sum - self.value(l.value) * y[l.index as usize];
+            }
+            y[step.row as usize] = sum;
+        }
+    }
+
+    fn basis(&self, free: &[bool], complete: impl Fn(&mut [Field61])) -> Vec<Vec<Field61>> {
+        (0..self.n)
+            .filter(|&k| free[k])
+            .map(|k| {
+                let mut vector = vec![Field61::ZERO; self.n];
+                vector[k] = Field61::ONE;
+                complete(&mut vector);
+                vector
+            })
+            .collect()
     }
 
     /// Fills the free places with random numbers, completes the vector and lists
     /// its nonzero places: a random member of the null space is nonzero
     /// wherever any member is, with the error probability of the file head.
-    fn support(&self, free: &[bool], complete: impl Fn(u64, &mut [Field61]) -> u64) -> Vec<u32> {
+    fn support(&self, free: &[bool], complete: impl Fn(&mut [Field61])) -> Vec<u32> {
         let mut state = POINT;
         let mut x: Vec<Field61> = free
             .iter()
@@ -204,7 +291,7 @@ impl SparseFactors {
                 }
             })
             .collect();
-        complete(state, &mut x);
+        complete(&mut x);
         (0..self.n as u32)
             .filter(|&k| x[k as usize] != Field61::ZERO)
             .collect()

@@ -113,7 +113,7 @@ fn derivatives(
     points: &[Complex64],
     ws: &mut Workspace,
 ) -> Result<Vec<Option<Complex64>>, NumericError> {
-    match plan.factor_sound(values, points, ws) {
+    match plan.factor_rough(values, points, ws) {
         Ok(()) => {
             plan.invert_selected(ws)?;
             Ok((0..points.len())
@@ -124,7 +124,7 @@ fn derivatives(
             // One of the points is a mode to the last bit: ask one by one.
             let mut found = Vec::with_capacity(points.len());
             for point in points {
-                found.push(match plan.factor_sound(values, &[*point], ws) {
+                found.push(match plan.factor_rough(values, &[*point], ws) {
                     Ok(()) => {
                         plan.invert_selected(ws)?;
                         Some(ws.log_derivative(0))
@@ -234,7 +234,7 @@ fn factor_beside(
             .iter()
             .map(|s| s * Complex64::new(1.0 + beside, 0.3 * beside))
             .collect();
-        result = plan.factor_sound(values, &points, ws);
+        result = plan.factor_rough(values, &points, ws);
         match &result {
             Err(NumericError::SingularPoint { .. } | NumericError::Unsound { .. }) => {}
             _ => return result,

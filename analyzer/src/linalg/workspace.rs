@@ -14,6 +14,10 @@ use std::sync::Arc;
 /// multiplier times 1e-16, so ten digits remain at this limit.
 pub const GROWTH_LIMIT: f64 = 1e6;
 
+/// Largest multiplier where a result is only the next step of an iteration that corrects itself
+/// (Newton, inverse iteration): five digits remain.
+pub const ROUGH_GROWTH_LIMIT: f64 = 1e11;
+
 /// The lane arrays in either width.
 #[derive(Debug, Clone)]
 pub(crate) enum Store {
@@ -54,6 +58,8 @@ pub struct Workspace {
     pub(crate) store: Store,
     /// Lanes in use.
     pub(crate) used: usize,
+    /// Growth below which a lane is trusted.
+    pub(crate) limit: f64,
     pub(crate) stage: Stage,
     pub(crate) patches: Vec<Option<Box<Patch>>>,
     /// (inverse entry, coefficient) of the part proportional to s.
@@ -106,6 +112,7 @@ impl Workspace {
         Self {
             store,
             used: 0,
+            limit: GROWTH_LIMIT,
             stage: Stage::Empty,
             patches: vec![None; core.lanes],
             slopes: core
@@ -138,7 +145,7 @@ impl Workspace {
 
     /// Soundness of the common pivot order, without regard to repairs.
     pub(crate) fn is_raw_sound(&self, lane: usize) -> bool {
-        self.stage != Stage::Empty && lane < self.used && self.raw_growth(lane) < GROWTH_LIMIT
+        self.stage != Stage::Empty && lane < self.used && self.raw_growth(lane) < self.limit
     }
 
     fn patch(&self, lane: usize) -> Option<&Patch> {
@@ -155,9 +162,10 @@ impl Workspace {
         }
     }
 
-    /// Whether the lane is finite and its growth below [`GROWTH_LIMIT`].
+    /// Whether the lane is finite and its growth below [`GROWTH_LIMIT`], or below
+    /// [`ROUGH_GROWTH_LIMIT`] after [`Plan::factor_rough`].
     pub fn is_sound(&self, lane: usize) -> bool {
-        self.growth(lane) < GROWTH_LIMIT
+        self.growth(lane) < self.limit
     }
 
     /// Determinant of A(s) in this lane, with the sign of the permutations;

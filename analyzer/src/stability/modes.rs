@@ -116,8 +116,8 @@ pub fn natural_modes(
             states: structure.finite_modes,
         });
     }
-    let found =
-        finite_modes(&solver.plan, values, &exact.0, &exact.1).map_err(ModeFailure::Numeric)?;
+    let found = finite_modes(&solver.plan, values, &exact.0, &exact.1, structure)
+        .map_err(ModeFailure::Numeric)?;
     let total = found.nonzero.len() + found.at_zero;
     if total != structure.finite_modes || found.at_zero != structure.zero_modes {
         return Err(ModeFailure::Numeric(NumericError::ModeCount {
