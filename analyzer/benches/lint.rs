@@ -7,8 +7,9 @@ mod amplifiers;
 use criterion::{BenchmarkId, Criterion, Throughput, criterion_group, criterion_main};
 use squeg_analyzer::cancel::Cancel;
 use squeg_analyzer::host::{FileRole, Host, SourceText};
+use squeg_analyzer::linalg::workspace::Workspace;
 use squeg_analyzer::stability::{
-    Solver, active_sources, count, driving_points, natural_modes, participation, two_port_factors,
+    Solver, TwoPortWatch, active_sources, count, driving_points, natural_modes, participation,
 };
 use squeg_analyzer::sweep::frequency_grid;
 use std::hint::black_box;
@@ -109,12 +110,17 @@ fn parts(criterion: &mut Criterion) {
         group.bench_function("count", |b| {
             b.iter(|| black_box(count(&solver, Some(&on), Some(&off), &stop).is_ok()));
         });
-        group.bench_function(format!("driving points, {} frequencies", grid.len()), |b| {
-            b.iter(|| black_box(driving_points(&solver, &grid, None, &stop).is_ok()));
-        });
-        group.bench_function(format!("two-port, {} frequencies", grid.len()), |b| {
-            b.iter(|| black_box(two_port_factors(&solver, circuit, &grid).is_ok()));
-        });
+        group.bench_function(
+            format!("driving points and two-port, {} frequencies", grid.len()),
+            |b| {
+                b.iter(|| {
+                    let mut two_port = TwoPortWatch::new(&solver, circuit);
+                    let mut watch = |ws: &Workspace, hz: &[f64]| two_port.see(ws, hz);
+                    let found = driving_points(&solver, &grid, None, &mut watch, &stop);
+                    black_box((found.is_ok(), two_port.finish()))
+                });
+            },
+        );
         group.finish();
     }
 }

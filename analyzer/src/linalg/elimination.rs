@@ -125,7 +125,8 @@ impl<S: Scalar> Elimination<S> {
         for cell in &upper {
             remove(&mut self.columns[cell.index as usize], row);
         }
-        let divisors: Vec<S::Divisor> = (0..self.stride)
+        let used = if lower.is_empty() { 0 } else { self.stride };
+        let divisors: Vec<S::Divisor> = (0..used)
             .map(|q| self.arena[pivot as usize + q].divisor())
             .collect();
         for &cell in &lower {

@@ -53,13 +53,13 @@ impl Plan {
         planned(core, values)?;
         ws.stage = Stage::Empty;
         ws.used = s.len();
-        ws.limit = GROWTH_LIMIT;
         ws.patches.fill_with(|| None);
         for (term, &(_, slot)) in ws.slopes.iter_mut().zip(&core.slope_terms) {
             term.1 = values.c[slot as usize];
         }
         on_lanes!(&mut ws.store, w => run_factor(core, values, s, w));
         ws.stage = Stage::Factored;
+        ws.judge(GROWTH_LIMIT);
         Ok(())
     }
 
@@ -92,7 +92,7 @@ impl Plan {
         ws: &mut Workspace,
     ) -> Result<(), NumericError> {
         self.factor(values, s, ws)?;
-        ws.limit = ROUGH_GROWTH_LIMIT;
+        ws.judge(ROUGH_GROWTH_LIMIT);
         self.repair(values, s, ws)
     }
 

@@ -177,7 +177,7 @@ impl SparseFactors {
             }
         }
         let pivots = steps.iter().map(|step| active.arena[step.pivot as usize]);
-        let inverses = pivots.map(Field61::inverse).collect();
+        let inverses = Field61::inverses(pivots.collect());
         Self {
             n,
             steps,

@@ -56,6 +56,25 @@ impl Field61 {
         result
     }
 
+    /// The inverses of many nonzero elements for the price of one and three products each (P. L.
+    /// Montgomery, Math. Comp. 48, 1987, from memory).
+    pub fn inverses(mut elements: Vec<Self>) -> Vec<Self> {
+        let mut product = Self::ONE;
+        let before: Vec<Self> = elements
+            .iter()
+            .map(|&element| {
+                let before = product;
+                product = product * element;
+                before
+            })
+            .collect();
+        let mut rest = product.inverse();
+        for (element, before) in elements.iter_mut().zip(before).rev() {
+            (rest, *element) = (rest * *element, rest * before);
+        }
+        elements
+    }
+
     /// The reduced representative, below 2^61 - 1.
     pub fn value(self) -> u64 {
         self.0
@@ -120,6 +139,16 @@ mod tests {
             Field61(P - 2),
             "negative difference"
         );
+    }
+
+    #[test]
+    fn many_inverses_are_as_one_by_one() {
+        let elements: Vec<Field61> = (1..40u64)
+            .map(|k| Field61::from_u64(k.wrapping_mul(0x9e37_79b9_7f4a_7c15)))
+            .collect();
+        let one_by_one: Vec<Field61> = elements.iter().map(|e| e.inverse()).collect();
+        assert_eq!(Field61::inverses(elements), one_by_one);
+        assert_eq!(Field61::inverses(Vec::new()), []);
     }
 
     #[test]

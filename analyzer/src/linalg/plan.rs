@@ -43,6 +43,8 @@ pub(crate) struct Core {
     pub(crate) delay_terms: Vec<[u32; 2]>,
     /// Sorted (row, column, inverse entry) of everything in the selected inverse.
     pub(crate) lookup: Vec<(u32, u32, u32)>,
+    /// Row and column of each inverse entry.
+    pub(crate) position_of: Vec<(u32, u32)>,
     pub(crate) wanted: Vec<(u32, u32)>,
     pub(crate) references: Vec<Complex64>,
 }
@@ -195,6 +197,7 @@ impl Plan {
             slope_terms: Vec::new(),
             delay_terms: Vec::new(),
             lookup: Vec::new(),
+            position_of: Vec::new(),
             wanted: wanted.to_vec(),
             references: references.to_vec(),
             program,
@@ -259,6 +262,10 @@ impl Core {
             }
         }
         self.lookup.sort_unstable();
+        self.position_of = vec![(NONE, NONE); self.selected.targets.len()];
+        for &(row, column, index) in &self.lookup {
+            self.position_of[index as usize] = (row, column);
+        }
         for (slot, row, column) in self.pattern.entries() {
             let Some(index) = self.inverse_index(column, row) else {
                 continue;

@@ -60,6 +60,8 @@ pub struct Workspace {
     pub(crate) used: usize,
     /// Growth below which a lane is trusted.
     pub(crate) limit: f64,
+    /// Lanes that the common pivot order serves soundly.
+    pub(crate) sound: [bool; 16],
     pub(crate) stage: Stage,
     pub(crate) patches: Vec<Option<Box<Patch>>>,
     /// (inverse entry, coefficient) of the part proportional to s.
@@ -113,6 +115,7 @@ impl Workspace {
             store,
             used: 0,
             limit: GROWTH_LIMIT,
+            sound: [false; 16],
             stage: Stage::Empty,
             patches: vec![None; core.lanes],
             slopes: core
@@ -128,6 +131,7 @@ impl Workspace {
     pub fn poison(&mut self) {
         on_lanes!(&mut self.store, w => poison(w));
         self.stage = Stage::Empty;
+        self.sound = [false; 16];
         self.used = 0;
         self.patches.fill(None);
     }
@@ -145,7 +149,13 @@ impl Workspace {
 
     /// Soundness of the common pivot order, without regard to repairs.
     pub(crate) fn is_raw_sound(&self, lane: usize) -> bool {
-        self.stage != Stage::Empty && lane < self.used && self.raw_growth(lane) < self.limit
+        self.stage != Stage::Empty && self.sound.get(lane) == Some(&true)
+    }
+
+    /// Judges all lanes after a factorisation.
+    pub(crate) fn judge(&mut self, limit: f64) {
+        self.limit = limit;
+        self.sound = std::array::from_fn(|lane| lane < self.used && self.raw_growth(lane) < limit);
     }
 
     fn patch(&self, lane: usize) -> Option<&Patch> {
@@ -198,7 +208,7 @@ impl Workspace {
     pub fn inverse_at(&self, lane: usize, index: usize) -> Option<Complex64> {
         if let Some(patch) = self.patch(lane) {
             // The patch has its own numbering: go back to row and column.
-            let &(row, column, _) = self.core.lookup.iter().find(|e| e.2 as usize == index)?;
+            let &(row, column) = self.core.position_of.get(index)?;
             return patch.workspace.inverse(0, row, column);
         }
         if self.stage != Stage::Inverted || !self.is_raw_sound(lane) {
@@ -208,6 +218,29 @@ impl Workspace {
             let z = w.inverse.get(index)?;
             Some(Complex64::new(z.re[lane], z.im[lane]))
         })
+    }
+
+    /// As [`Workspace::inverse_at`] for all lanes in use at once: `out` receives one number per
+    /// point, NaN where a lane is not sound or nothing was inverted.
+    pub fn inverse_lanes(&self, index: usize, out: &mut [Complex64]) {
+        let nan = Complex64::new(f64::NAN, f64::NAN);
+        for (lane, out) in out.iter_mut().enumerate() {
+            *out = if self.patch(lane).is_some() {
+                self.inverse_at(lane, index).unwrap_or(nan)
+            } else {
+                nan
+            };
+        }
+        if self.stage != Stage::Inverted {
+            return;
+        }
+        on_lanes!(&self.store, w => if let Some(z) = w.inverse.get(index) {
+            for (lane, out) in out.iter_mut().enumerate().take(self.used) {
+                if self.sound[lane] {
+                    *out = Complex64::new(z.re[lane], z.im[lane]);
+                }
+            }
+        });
     }
 
     /// d ln det A / ds = tr(A^-1 dA/ds); NaN before [`Plan::invert_selected`]

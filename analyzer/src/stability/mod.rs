@@ -5,8 +5,10 @@
 mod active;
 mod determinant;
 mod driving_point;
+mod impedance;
 mod modes;
 mod probe;
+mod refine;
 mod screen;
 mod two_port;
 mod verdict;
@@ -14,13 +16,14 @@ mod verdict;
 pub use active::{ActiveSet, active_sources, is_passive_set};
 pub use determinant::{Determinant, DeterminantFailure, count, normalized_determinant};
 pub use driving_point::{
-    Crossing, DrivingPoint, Probe, conductance_ranges, driving_point_admittance, driving_points,
+    Crossing, DrivingPoint, conductance_ranges, driving_point_admittance, driving_points,
     startup_crossings,
 };
+pub use impedance::Probe;
 pub use modes::{
     AXIS_TOLERANCE, Mode, ModeFailure, Modes, Participation, natural_modes, participation,
 };
 pub use probe::{Solver, SolverFailure};
 pub use screen::{Doubt, LISTED_DAMPING, ListedMode, Screen, ScreenRequest, screen, solver_of};
-pub use two_port::{Factors, TwoPort, factors, scattering, two_port_factors};
+pub use two_port::{Factors, TwoPort, TwoPortWatch, factors, scattering};
 pub use verdict::{Sight, Verdict};

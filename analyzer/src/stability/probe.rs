@@ -2,6 +2,7 @@
 //! works on. No fixture is inserted anywhere; all methods read the same matrices.
 
 use super::active::ActiveSet;
+use super::two_port;
 use crate::assembly::{REFERENCE_RAD_PER_S, Switch, System};
 use crate::circuit::{Circuit, NodeRef};
 use crate::linalg::error::NumericError;
@@ -82,7 +83,8 @@ impl Solver {
         let off_structure = structure(n, &off_exact.0, &off_exact.1);
         let on = system.values(&Switch::all_on());
         let off = system.values(switch);
-        let wanted = wanted(&system, pairs);
+        let mut wanted = wanted(&system, pairs);
+        wanted.extend(two_port::wanted(circuit, &system.unknowns));
         let reference: Vec<f64> = REFERENCES_HZ.iter().map(|hz| normalised_rad(*hz)).collect();
         let samples: Vec<&Values> = if off_structure.singular {
             vec![&on]

@@ -7,11 +7,12 @@ use super::modes::{
     AXIS_TOLERANCE, Mode, ModeFailure, Modes, Participation, natural_modes, participation,
 };
 use super::probe::{Solver, SolverFailure};
-use super::two_port::{TwoPort, two_port_factors};
+use super::two_port::{TwoPort, TwoPortWatch};
 use super::verdict::Verdict;
 use crate::assembly::{Switch, Unknown};
 use crate::cancel::{Cancel, Cancelled};
 use crate::circuit::{Circuit, NodeId, NodeRef, PartId};
+use crate::linalg::workspace::Workspace;
 use crate::sweep::frequency_grid;
 
 /// What to screen and how far.
@@ -249,15 +250,15 @@ impl Work<'_> {
         self.cancel.check()?;
         let sweep_hz = self.sweep(&listed);
         let grid = self.grid(sweep_hz, modes.as_ref());
-        let driving = driving_points(self.solver, &grid, self.judged_nodes().as_deref(), &stop);
+        let mut two_port = TwoPortWatch::new(self.solver, self.request.circuit);
+        let mut watch = |ws: &Workspace, hz: &[f64]| two_port.see(ws, hz);
+        let nodes = self.judged_nodes();
+        let driving = driving_points(self.solver, &grid, nodes.as_deref(), &mut watch, &stop);
         self.cancel.check()?;
         let (driving, drive_doubt) = match driving {
             Ok(found) => (found.unwrap_or_default(), None),
             Err(error) => (Vec::new(), Some(Doubt::Numeric(error.to_string()))),
         };
-        let two_port = two_port_factors(self.solver, self.request.circuit, &grid)
-            .ok()
-            .flatten();
         let (determinant, count_doubt) = match counted {
             Ok(determinant) => (Some(determinant), None),
             Err(failure) => (None, Some(Doubt::NotCounted(failure))),
@@ -287,7 +288,7 @@ impl Work<'_> {
             listed,
             determinant,
             driving,
-            two_port,
+            two_port: two_port.finish(),
             doubt,
             verdict,
         })

@@ -6,9 +6,10 @@
 //! all others. The figures are those of the swept points; nothing is said between them.
 
 use super::probe::{Solver, normalised_rad};
-use crate::assembly::REFERENCE_OHM;
+use crate::assembly::{REFERENCE_OHM, Unknowns};
 use crate::circuit::{Circuit, NodeRef, Port, PortDrive};
 use crate::linalg::error::NumericError;
+use crate::linalg::workspace::Workspace;
 use nalgebra::DMatrix;
 use num_complex::Complex64;
 
@@ -55,8 +56,7 @@ struct Reading {
 }
 
 impl Reading {
-    fn new(solver: &Solver, port: &Port) -> Option<Self> {
-        let unknowns = &solver.system.unknowns;
+    fn new(unknowns: &Unknowns, port: &Port) -> Option<Self> {
         let across = |plus: NodeRef, minus: NodeRef| {
             [(plus, 1.0), (minus, -1.0)]
                 .into_iter()
@@ -83,7 +83,7 @@ impl Reading {
     }
 
     /// The right-hand side of a wave a = 1 into this port: an EMF of 2 sqrt(R).
-    fn drive(&self) -> Vec<(u32, Complex64)> {
+    fn drive(&self) -> Vec<(u32, f64)> {
         let emf = 2.0 * self.ohm.sqrt();
         // Shunt ports are driven by the current emf/R (current laws are scaled by 50 ohm).
         let value = if self.series {
@@ -93,13 +93,13 @@ impl Reading {
         };
         self.rows
             .iter()
-            .map(|(row, sign)| (*row, Complex64::new(sign * value, 0.0)))
+            .map(|(row, sign)| (*row, sign * value))
             .collect()
     }
 
-    /// b = (2 V - E) / (2 sqrt R), with V = E + R I for a series port of branch current I.
-    fn wave(&self, x: &dyn Fn(u32) -> Complex64, driven: bool) -> Complex64 {
-        let sum: Complex64 = self.rows.iter().map(|(row, sign)| x(*row) * *sign).sum();
+    /// b = (2 V - E) / (2 sqrt R), with V = E + R I for a series port of branch current I. `sum`
+    /// is what the port's rows read.
+    fn wave(&self, sum: Complex64, driven: bool) -> Complex64 {
         let emf = if driven { 2.0 * self.ohm.sqrt() } else { 0.0 };
         let volts = if self.series {
             emf + self.ohm / REFERENCE_OHM * sum
@@ -107,6 +107,73 @@ impl Reading {
             sum
         };
         (2.0 * volts - emf) / (2.0 * self.ohm.sqrt())
+    }
+}
+
+/// Pairs (unknown, equation) of the inverse that the waves between the ports of a circuit need.
+pub(super) fn wanted(circuit: &Circuit, unknowns: &Unknowns) -> Vec<(u32, u32)> {
+    let rows: Vec<u32> = circuit
+        .ports
+        .iter()
+        .filter_map(|port| Reading::new(unknowns, port))
+        .flat_map(|reading| reading.rows)
+        .map(|(row, _)| row)
+        .collect();
+    rows.iter()
+        .flat_map(|a| rows.iter().map(|b| (*a, *b)))
+        .collect()
+}
+
+/// Reads scattering matrices from a selected inverse.
+struct Waves {
+    readings: Vec<Reading>,
+    /// Per pair of ports (row, column): entries of the inverse with what they are multiplied by.
+    terms: Vec<Vec<(usize, f64)>>,
+}
+
+impl Waves {
+    /// `None` when a port cannot be read.
+    fn new(solver: &Solver, circuit: &Circuit) -> Option<Self> {
+        let unknowns = &solver.system.unknowns;
+        let readings = circuit
+            .ports
+            .iter()
+            .map(|port| Reading::new(unknowns, port))
+            .collect::<Option<Vec<_>>>()?;
+        let mut terms = Vec::new();
+        for to in &readings {
+            for from in &readings {
+                let mut pair = Vec::new();
+                for (equation, drive) in from.drive() {
+                    for (unknown, sign) in &to.rows {
+                        let index = solver.plan.inverse_index(*unknown, equation)?;
+                        pair.push((index, drive * sign));
+                    }
+                }
+                terms.push(pair);
+            }
+        }
+        Some(Self { readings, terms })
+    }
+
+    /// The matrices of one batch of points, rows and columns in port order.
+    fn read(&self, ws: &Workspace, points: usize) -> Vec<DMatrix<Complex64>> {
+        let ports = self.readings.len();
+        let mut matrices = vec![DMatrix::zeros(ports, ports); points];
+        let mut lanes = vec![Complex64::default(); points];
+        for (k, pair) in self.terms.iter().enumerate() {
+            let (i, j) = (k / ports, k % ports);
+            for (index, factor) in pair {
+                ws.inverse_lanes(*index, &mut lanes);
+                for (matrix, z) in matrices.iter_mut().zip(&lanes) {
+                    matrix[(i, j)] += z * *factor;
+                }
+            }
+            for matrix in &mut matrices {
+                matrix[(i, j)] = self.readings[i].wave(matrix[(i, j)], i == j);
+            }
+        }
+        matrices
     }
 }
 
@@ -120,82 +187,71 @@ pub fn scattering(
     circuit: &Circuit,
     hz: &[f64],
 ) -> Result<Option<Vec<DMatrix<Complex64>>>, NumericError> {
-    let readings: Option<Vec<Reading>> = circuit
-        .ports
-        .iter()
-        .map(|port| Reading::new(solver, port))
-        .collect();
-    let Some(readings) = readings else {
+    let Some(waves) = Waves::new(solver, circuit) else {
         return Ok(None);
     };
-    let ports = readings.len();
-    let (plan, lanes) = (&solver.plan, solver.plan.lanes());
+    let plan = &solver.plan;
     let mut ws = plan.workspace();
-    let mut x = vec![Complex64::default(); plan.n() * lanes];
     let mut out = Vec::with_capacity(hz.len());
-    for batch in hz.chunks(lanes) {
+    for batch in hz.chunks(plan.lanes()) {
         let s: Vec<Complex64> = batch
             .iter()
             .map(|hz| Complex64::new(0.0, normalised_rad(*hz)))
             .collect();
         plan.factor_sound(&solver.on, &s, &mut ws)?;
-        let mut matrices = vec![DMatrix::zeros(ports, ports); batch.len()];
-        for (j, source) in readings.iter().enumerate() {
-            plan.solve(&mut ws, &source.drive(), &mut x)?;
-            for (lane, matrix) in matrices.iter_mut().enumerate() {
-                let at = |row: u32| {
-                    x.get(row as usize * lanes + lane)
-                        .copied()
-                        .unwrap_or_default()
-                };
-                for (i, reading) in readings.iter().enumerate() {
-                    matrix[(i, j)] = reading.wave(&at, i == j);
-                }
-            }
-        }
-        out.extend(matrices);
+        plan.invert_selected(&mut ws)?;
+        out.extend(waves.read(&ws, batch.len()));
     }
     Ok(Some(out))
 }
 
-/// Least K and mu over a sweep of a block with exactly two ports.
-///
-/// # Errors
-/// What factorisation reports.
-pub fn two_port_factors(
-    solver: &Solver,
-    circuit: &Circuit,
-    grid_hz: &[f64],
-) -> Result<Option<TwoPort>, NumericError> {
-    if circuit.ports.len() != 2 {
-        return Ok(None);
-    }
-    let Some(matrices) = scattering(solver, circuit, grid_hz)? else {
-        return Ok(None);
-    };
-    let mut mu_min = (f64::INFINITY, 0.0);
-    let mut k_min: Option<(f64, f64)> = None;
-    let mut unilateral = true;
-    for (hz, matrix) in grid_hz.iter().zip(&matrices) {
-        let found = factors(matrix);
-        if found.mu < mu_min.0 {
-            mu_min = (found.mu, *hz);
+/// Collects the least K and mu while a block with exactly two ports is swept.
+pub struct TwoPortWatch {
+    waves: Option<Waves>,
+    mu_min: (f64, f64),
+    k_min: Option<(f64, f64)>,
+    transmits: bool,
+}
+
+impl TwoPortWatch {
+    /// A watch that sees nothing unless the circuit has two ports that can be read.
+    pub fn new(solver: &Solver, circuit: &Circuit) -> Self {
+        let two = circuit.ports.len() == 2;
+        Self {
+            waves: two.then(|| Waves::new(solver, circuit)).flatten(),
+            mu_min: (f64::INFINITY, 0.0),
+            k_min: None,
+            transmits: false,
         }
-        if found.k.is_finite() {
-            unilateral = false;
-            if k_min.is_none_or(|(k, _)| found.k < k) {
-                k_min = Some((found.k, *hz));
+    }
+
+    /// Takes one batch of points (hertz) with its selected inverse in.
+    pub fn see(&mut self, ws: &Workspace, hz: &[f64]) {
+        let Some(waves) = &self.waves else {
+            return;
+        };
+        for (hz, matrix) in hz.iter().zip(waves.read(ws, hz.len())) {
+            let found = factors(&matrix);
+            if found.mu < self.mu_min.0 {
+                self.mu_min = (found.mu, *hz);
+            }
+            if found.k.is_finite() {
+                self.transmits = true;
+                if self.k_min.is_none_or(|(k, _)| found.k < k) {
+                    self.k_min = Some((found.k, *hz));
+                }
             }
         }
     }
-    if !mu_min.0.is_finite() {
-        return Ok(None);
+
+    /// The least figures; `None` when there is no mu at any point.
+    pub fn finish(self) -> Option<TwoPort> {
+        self.mu_min.0.is_finite().then(|| TwoPort {
+            mu_min: self.mu_min.0,
+            mu_min_hz: self.mu_min.1,
+            k_min: self.k_min.map(|(k, _)| k),
+            k_min_hz: self.k_min.map(|(_, hz)| hz),
+            unilateral: !self.transmits,
+        })
     }
-    Ok(Some(TwoPort {
-        mu_min: mu_min.0,
-        mu_min_hz: mu_min.1,
-        k_min: k_min.map(|(k, _)| k),
-        k_min_hz: k_min.map(|(_, hz)| hz),
-        unilateral,
-    }))
 }
