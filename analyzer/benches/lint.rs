@@ -69,6 +69,37 @@ fn screen(criterion: &mut Criterion) {
     group.finish();
 }
 
+/// From a changed value, and from a changed comment, to the new findings of a host that knows the
+/// block.
+fn edits(criterion: &mut Criterion) {
+    let text = amplifiers::amplifier_63();
+    let mut group = criterion.benchmark_group("63 unknowns, after an edit");
+    let swapped = |from: &str, to: &str| text.replacen(from, to, 1);
+    let card = text
+        .lines()
+        .find(|line| line.starts_with('R'))
+        .expect("a resistor");
+    let other = format!("{card}1");
+    let edits = [
+        ("of a value", [text.clone(), swapped(card, &other)]),
+        ("of a comment", [text.clone(), swapped("\n", "\n* seen\n")]),
+    ];
+    for (what, texts) in edits {
+        let mut host = Host::new(|| Duration::ZERO);
+        let file = host.add_file(SourceText::new(texts[0].as_str()), FileRole::Top);
+        let mut turn = 0;
+        group.bench_function(what, |b| {
+            b.iter(|| {
+                turn += 1;
+                host.set_text(file, SourceText::new(texts[turn % 2].as_str()));
+                let screened = host.prepare(file).screen(&Cancel::new());
+                black_box(screened.map(|s| s.findings.len()))
+            });
+        });
+    }
+    group.finish();
+}
+
 /// The parts of one screen, on the amplifier of 63 unknowns and one of about 190.
 fn parts(criterion: &mut Criterion) {
     let texts = [
@@ -83,8 +114,8 @@ fn parts(criterion: &mut Criterion) {
         let active = active_sources(circuit, &[]);
         let solver = Solver::with_active(circuit, &active).expect("a system");
         let stop = || false;
-        let on = natural_modes(&solver, false, 1500, &stop).expect("modes");
-        let off = natural_modes(&solver, true, 1500, &stop).expect("modes");
+        let on = natural_modes(&solver, false, 1500, None, &stop).expect("modes");
+        let off = natural_modes(&solver, true, 1500, None, &stop).expect("modes");
         let seeds: Vec<(f64, f64)> = on.list.iter().map(|m| (m.hz(), m.damping())).collect();
         let grid = frequency_grid(1e3, 1e11, &seeds);
         let mut group = criterion.benchmark_group(format!("{unknowns} unknowns"));
@@ -102,7 +133,7 @@ fn parts(criterion: &mut Criterion) {
             b.iter(|| black_box(Solver::with_active(circuit, &active).is_ok()));
         });
         group.bench_function("modes", |b| {
-            b.iter(|| black_box(natural_modes(&solver, false, 1500, &stop).is_ok()));
+            b.iter(|| black_box(natural_modes(&solver, false, 1500, None, &stop).is_ok()));
         });
         group.bench_function("shares", |b| {
             b.iter(|| black_box(participation(&solver, circuit, &on.list).is_ok()));
@@ -128,6 +159,6 @@ fn parts(criterion: &mut Criterion) {
 criterion_group! {
     name = benches;
     config = Criterion::default().sample_size(10).warm_up_time(Duration::from_millis(500)).measurement_time(Duration::from_secs(3));
-    targets = read, screen, parts
+    targets = read, screen, edits, parts
 }
 criterion_main!(benches);

@@ -142,7 +142,7 @@ impl Case {
 
     fn modes(&self) -> Modes {
         let solver = self.solver(Vec::new(), &[]);
-        natural_modes(&solver, false, 1500, &|| false).expect("the case has modes")
+        natural_modes(&solver, false, 1500, None, &|| false).expect("the case has modes")
     }
 
     fn request(&self) -> ScreenRequest<'_> {
@@ -310,7 +310,7 @@ fn run(netlist: &str, expect: &Table, quantity: &str) -> Result<(), String> {
             let counted = counted(&case, expect)?;
             equal(counted.off_roots, Some(whole()))?;
             let solver = case.solver(case.sources(expect), &[]);
-            let off = natural_modes(&solver, true, 1500, &|| false);
+            let off = natural_modes(&solver, true, 1500, None, &|| false);
             equal(off.map(|m| m.unstable()).ok(), Some(whole()))
         }
         "participation" => shares(&case, expect),
@@ -320,8 +320,8 @@ fn run(netlist: &str, expect: &Table, quantity: &str) -> Result<(), String> {
 
 fn counted(case: &Case, expect: &Table) -> Result<squeg_analyzer::stability::Determinant, String> {
     let solver = case.solver(case.sources(expect), &[]);
-    let on = natural_modes(&solver, false, 1500, &|| false).map_err(|e| format!("{e:?}"))?;
-    let off = natural_modes(&solver, true, 1500, &|| false).ok();
+    let on = natural_modes(&solver, false, 1500, None, &|| false).map_err(|e| format!("{e:?}"))?;
+    let off = natural_modes(&solver, true, 1500, None, &|| false).ok();
     count(&solver, Some(&on), off.as_ref(), &|| false).map_err(|failure| failure.reason)
 }
 

@@ -4,6 +4,7 @@
 mod accepted;
 mod fingerprint;
 mod hover;
+mod memo;
 mod outline;
 mod prepared;
 mod report;

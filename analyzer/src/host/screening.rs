@@ -11,7 +11,7 @@ use crate::circuit::{NodeRef, PartKind};
 use crate::elaborate::BlockCircuit;
 use crate::finding::Finding;
 use crate::rules::{BlockContext, screen_findings};
-use crate::stability::{Doubt, ListedMode, Screen, ScreenRequest, screen};
+use crate::stability::{Doubt, ListedMode, Screen, ScreenRequest};
 
 /// Shares listed of each mode.
 const SHARES: usize = 8;
@@ -62,14 +62,15 @@ impl Prepared {
             .iter()
             .any(|part| matches!(part.kind, PartKind::NotComputed { .. }));
         let result = if computable {
-            Some(screen(&request(self, block), cancel)?)
+            let memo = &self.host.memo;
+            Some(memo.screen(self.root, &block.name, &request(self, block), cancel)?)
         } else {
             None
         };
         let elapsed = (self.host.now)().saturating_sub(started);
-        let verdict = verdict(block, result.as_ref());
-        let why = why(block, result.as_ref(), verdict);
-        let mut report = report(block, result.as_ref(), verdict, why.clone());
+        let verdict = verdict(block, result.as_deref());
+        let why = why(block, result.as_deref(), verdict);
+        let mut report = report(block, result.as_deref(), verdict, why.clone());
         report.elapsed_ms = elapsed.as_secs_f64() * 1e3;
         if result.is_none() {
             report.unknowns = Unknowns::new(&block.circuit).len();
@@ -80,7 +81,7 @@ impl Prepared {
         let context = BlockContext {
             text: &text,
             block,
-            screen: result.as_ref(),
+            screen: result.as_deref(),
             verdict,
             why: why.as_deref(),
         };

@@ -1,5 +1,6 @@
 //! The texts the host knows, parsed, and the answers to their includes.
 
+use super::memo::Memo;
 use super::prepared::Prepared;
 use crate::config::Config;
 use crate::elaborate::{FileStore, Include, IncludeRequest, Program, gather};
@@ -54,6 +55,7 @@ pub struct Host {
     pub(super) files: Vec<SourceFile>,
     includes: HashMap<(FileId, String), Include>,
     pub(super) now: fn() -> Duration,
+    pub(super) memo: Arc<Memo>,
     /// The settings in force.
     pub config: Arc<Config>,
 }
@@ -65,6 +67,7 @@ impl Host {
             files: Vec::new(),
             includes: HashMap::new(),
             now,
+            memo: Arc::default(),
             config: Arc::new(Config::default()),
         }
     }

@@ -131,7 +131,7 @@ impl Prepared {
 
     fn modes_table(&self, solver: &Solver) -> Result<TraceTable, TraceError> {
         let limit = self.host.config.limits.states;
-        let modes = natural_modes(solver, false, limit, &|| false)
+        let modes = natural_modes(solver, false, limit, None, &|| false)
             .map_err(|failure| TraceError::NoSystem(format!("modes are not known: {failure:?}")))?;
         let mut rows: Vec<Vec<f64>> = modes
             .list

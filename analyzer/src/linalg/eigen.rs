@@ -8,6 +8,7 @@
 //! eigenvalues of F E) in which every entry that is exactly zero is set to zero in floating point
 //! too. So the number of artefacts of rounding is never judged by their size.
 
+use super::apart;
 use super::elimination::{Elimination, Scalar, Step};
 use super::error::NumericError;
 use super::exact::{ExactEntry, Field61, SparseFactors, Structure, combine};
@@ -35,13 +36,14 @@ pub struct Modes {
 ///
 /// # Errors
 /// [`NumericError::SingularPoint`] when the shift is a mode, [`NumericError::NoConvergence`] when
-/// the eigenvalue iteration does not settle, and what factorisation reports.
+/// the eigenvalue iteration does not settle, [`NumericError::Stopped`] when `stop` says so, and what factorisation reports.
 pub fn finite_modes(
     plan: &Plan,
     values: &Values,
     g: &[ExactEntry],
     c: &[ExactEntry],
     structure: &Structure,
+    stop: &dyn Fn() -> bool,
 ) -> Result<Modes, NumericError> {
     let rank = RankPair::new(plan.n(), c, values);
     let size = rank.columns.len();
@@ -52,9 +54,9 @@ pub fn finite_modes(
         });
     }
     let float = rank.transfer(plan, values)?;
-    match by_size(&float, structure)? {
+    match by_size(&float, structure, stop)? {
         Some(modes) => Ok(modes),
-        None => by_twins(float, rank.exact_transfer(plan.n(), g, c)?),
+        None => by_twins(float, rank.exact_transfer(plan.n(), g, c)?, stop),
     }
 }
 
@@ -63,12 +65,16 @@ const GAP: f64 = 1e6;
 
 /// The modes when what is exactly zero stands far from the rest: how many there are of either kind
 /// is known exactly, so only the gap is asked of the doubles. `None` without such a gap.
-fn by_size(float: &DMatrix<f64>, structure: &Structure) -> Result<Option<Modes>, NumericError> {
+fn by_size(
+    float: &DMatrix<f64>,
+    structure: &Structure,
+    stop: &dyn Fn() -> bool,
+) -> Result<Option<Modes>, NumericError> {
     let (finite, at_zero) = (structure.finite_modes, structure.zero_modes);
     let Some(infinite) = float.nrows().checked_sub(finite) else {
         return Ok(None);
     };
-    let mut mu = eigenvalues(float.clone())?;
+    let mut mu = eigenvalues(float.clone(), stop)?;
     mu.sort_by(|a, b| a.norm_sqr().total_cmp(&b.norm_sqr()));
     if !has_gap(&mu, infinite) {
         return Ok(None);
@@ -91,7 +97,11 @@ fn has_gap(rising: &[Complex64], zeros: usize) -> bool {
 }
 
 /// The modes by removing exact zeros with rank factorisations, in doubles and in the field at once.
-fn by_twins(float: DMatrix<f64>, exact: FieldMatrix) -> Result<Modes, NumericError> {
+fn by_twins(
+    float: DMatrix<f64>,
+    exact: FieldMatrix,
+    stop: &dyn Fn() -> bool,
+) -> Result<Modes, NumericError> {
     let (float, exact) = regular_part(float, exact);
     let shift = Field61::from_f64(SHIFT).unwrap_or(Field61::ONE);
     let from_infinity = exact.rows;
@@ -100,13 +110,13 @@ fn by_twins(float: DMatrix<f64>, exact: FieldMatrix) -> Result<Modes, NumericErr
     let (rest, rest_exact) = regular_part(rest, rest_exact);
     let at_zero = from_infinity - rest_exact.rows;
     let nonzero = if at_zero == 0 {
-        eigenvalues(float)?
+        eigenvalues(float, stop)?
             .into_iter()
             .map(|mu| SHIFT - mu.inv())
             .collect()
     } else {
         // nu = 1 - s0 mu, so s = s0 - 1/mu = -s0 nu / (1 - nu).
-        eigenvalues(rest)?
+        eigenvalues(rest, stop)?
             .into_iter()
             .map(|nu| -SHIFT * nu / (1.0 - nu))
             .collect()
@@ -114,7 +124,22 @@ fn by_twins(float: DMatrix<f64>, exact: FieldMatrix) -> Result<Modes, NumericErr
     Ok(Modes { nonzero, at_zero })
 }
 
-fn eigenvalues(matrix: DMatrix<f64>) -> Result<Vec<Complex64>, NumericError> {
+/// Orders from which the eigenvalues are computed on a thread of their own, so that a stop is obeyed
+/// at once although the iteration itself cannot be interrupted (below it takes milliseconds).
+const APART: usize = 200;
+
+fn eigenvalues(
+    matrix: DMatrix<f64>,
+    stop: &dyn Fn() -> bool,
+) -> Result<Vec<Complex64>, NumericError> {
+    if matrix.nrows() < APART {
+        schur(&matrix)
+    } else {
+        apart::run(move || schur(&matrix), stop).unwrap_or(Err(NumericError::Stopped))
+    }
+}
+
+fn schur(matrix: &DMatrix<f64>) -> Result<Vec<Complex64>, NumericError> {
     let order = matrix.nrows();
     if order == 0 {
         return Ok(Vec::new());

@@ -63,6 +63,30 @@ impl Plan {
         Ok(())
     }
 
+    /// Whether this plan, made for other values, is as good as a new one for `samples`: same
+    /// pattern, same wanted entries, nothing that it does not hold, and small multipliers at every
+    /// `s = j * reference_rad`.
+    pub fn serves(
+        &self,
+        samples: &[&Values],
+        reference_rad: &[f64],
+        wanted: &[(u32, u32)],
+    ) -> bool {
+        /// A new plan keeps multipliers below 1e3 at the references.
+        const SMALL: f64 = 1e4;
+        if self.core.wanted != wanted {
+            return false;
+        }
+        let mut ws = self.workspace();
+        reference_rad.chunks(self.lanes()).all(|batch| {
+            let s: Vec<Complex64> = batch.iter().map(|&w| Complex64::new(0.0, w)).collect();
+            samples.iter().all(|values| {
+                let factored = values.check().is_ok() && self.factor(values, &s, &mut ws).is_ok();
+                factored && (0..s.len()).all(|lane| ws.growth(lane) < SMALL)
+            })
+        })
+    }
+
     /// As [`Plan::factor`], then repairs every unsound lane with a strict pivot
     /// order for its own point, so that all lanes are sound on success.
     ///

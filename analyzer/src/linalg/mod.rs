@@ -6,6 +6,7 @@
 //! for many frequencies, `exact`, `eigen`, `polish` find the modes, `count` the
 //! encirclements; `dense` is the slow oracle for checks.
 
+mod apart;
 pub mod count;
 pub mod dense;
 pub mod det;

@@ -95,16 +95,9 @@ pub fn count(
     })
 }
 
-/// All modes of the whole plane, normalised.
+/// All modes of the whole plane, normalised; none when they are not known.
 fn whole_plane(modes: Option<&Modes>) -> Vec<Complex64> {
-    let list = modes.map_or(&[][..], |modes| &modes.list);
-    list.iter()
-        .flat_map(|mode| {
-            let s = mode.normalised;
-            [Some(s), (s.im > 0.0).then(|| s.conj())]
-        })
-        .flatten()
-        .collect()
+    modes.map_or_else(Vec::new, |modes| modes.whole_plane().collect())
 }
 
 fn in_words(failure: &CountFailure) -> DeterminantFailure {

@@ -24,6 +24,9 @@ pub use modes::{
     AXIS_TOLERANCE, Mode, ModeFailure, Modes, Participation, natural_modes, participation,
 };
 pub use probe::{Solver, SolverFailure};
-pub use screen::{Doubt, LISTED_DAMPING, ListedMode, Screen, ScreenRequest, screen, solver_of};
+pub use screen::{
+    Doubt, Earlier, LISTED_DAMPING, ListedMode, Screen, ScreenRequest, screen, screen_from,
+    solver_of,
+};
 pub use two_port::{Factors, TwoPort, TwoPortWatch, factors, scattering};
 pub use verdict::{Sight, Verdict};

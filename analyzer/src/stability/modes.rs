@@ -10,7 +10,7 @@ use crate::assembly::{Unknown, rad_per_s};
 use crate::circuit::{Circuit, NodeId, PartId, PartKind};
 use crate::linalg::eigen::finite_modes;
 use crate::linalg::error::NumericError;
-use crate::linalg::polish::{null_vectors, polish};
+use crate::linalg::polish::{Polished, null_vectors, polish};
 use num_complex::Complex64;
 
 /// One mode of each conjugate pair.
@@ -77,6 +77,28 @@ impl Modes {
             .sum()
     }
 
+    /// All modes of the whole plane but those at the origin, normalised.
+    pub(super) fn whole_plane(&self) -> impl Iterator<Item = Complex64> + '_ {
+        self.list.iter().flat_map(|mode| {
+            let s = mode.normalised;
+            [Some(s), (s.im > 0.0).then(|| s.conj())]
+                .into_iter()
+                .flatten()
+        })
+    }
+
+    /// Whether no two modes of the list are the same to rounding.
+    fn all_apart(&self) -> bool {
+        const SAME: f64 = 1e-6;
+        let mut by_size: Vec<Complex64> = self.list.iter().map(|mode| mode.normalised).collect();
+        by_size.sort_by(|a, b| a.norm().total_cmp(&b.norm()));
+        by_size.iter().enumerate().all(|(k, s)| {
+            let near = |other: &&Complex64| other.norm() <= s.norm() * (1.0 + SAME);
+            let mut rest = by_size[k + 1..].iter().take_while(near);
+            rest.all(|other| (other - s).norm() > SAME * s.norm())
+        })
+    }
+
     /// Number of finite modes in the whole plane, those at zero included.
     pub fn finite(&self) -> usize {
         self.at_zero + self.list.iter().map(Mode::count).sum::<usize>()
@@ -96,7 +118,8 @@ pub enum ModeFailure {
     Numeric(NumericError),
 }
 
-/// All finite modes with the sources on (`off` false) or off.
+/// All finite modes with the sources on (`off` false) or off. `earlier` are those of a system of
+/// the same structure with other values: Newton steps from them are tried first.
 ///
 /// # Errors
 /// See [`ModeFailure`].
@@ -104,6 +127,7 @@ pub fn natural_modes(
     solver: &Solver,
     off: bool,
     limit: usize,
+    earlier: Option<&Modes>,
     stop: &dyn Fn() -> bool,
 ) -> Result<Modes, ModeFailure> {
     let (values, exact, structure) = if off {
@@ -116,7 +140,10 @@ pub fn natural_modes(
             states: structure.finite_modes,
         });
     }
-    let found = finite_modes(&solver.plan, values, &exact.0, &exact.1, structure)
+    if let Some(modes) = earlier.and_then(|earlier| restarted(solver, off, earlier, stop)) {
+        return Ok(modes);
+    }
+    let found = finite_modes(&solver.plan, values, &exact.0, &exact.1, structure, stop)
         .map_err(ModeFailure::Numeric)?;
     let total = found.nonzero.len() + found.at_zero;
     if total != structure.finite_modes || found.at_zero != structure.zero_modes {
@@ -127,6 +154,35 @@ pub fn natural_modes(
     }
     let polished = polish(&solver.plan, values, &found.nonzero, found.at_zero, stop)
         .map_err(ModeFailure::Numeric)?;
+    Ok(sorted(polished, found.at_zero))
+}
+
+/// The modes by Newton steps from those of an earlier system of the same kind. They are all of them
+/// when every one settled, no two are the same, and their number is the exact one; otherwise `None`.
+fn restarted(
+    solver: &Solver,
+    off: bool,
+    earlier: &Modes,
+    stop: &dyn Fn() -> bool,
+) -> Option<Modes> {
+    let (values, structure) = if off {
+        (&solver.off, &solver.off_structure)
+    } else {
+        (&solver.on, &solver.on_structure)
+    };
+    if earlier.at_zero != structure.zero_modes || earlier.finite() != structure.finite_modes {
+        return None;
+    }
+    let seeds: Vec<Complex64> = earlier.whole_plane().collect();
+    let polished = polish(&solver.plan, values, &seeds, earlier.at_zero, stop).ok()?;
+    let settled = polished
+        .iter()
+        .all(|mode| mode.converged && mode.cluster == 1);
+    let modes = sorted(polished, earlier.at_zero);
+    (settled && modes.finite() == structure.finite_modes && modes.all_apart()).then_some(modes)
+}
+
+fn sorted(polished: Vec<Polished>, at_zero: usize) -> Modes {
     let mut list: Vec<Mode> = polished
         .into_iter()
         .map(|mode| Mode {
@@ -140,10 +196,7 @@ pub fn natural_modes(
             .total_cmp(&a.growth_per_s())
             .then(a.hz().total_cmp(&b.hz()))
     });
-    Ok(Modes {
-        list,
-        at_zero: found.at_zero,
-    })
+    Modes { list, at_zero }
 }
 
 /// Shares in one mode.

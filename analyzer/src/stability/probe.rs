@@ -63,6 +63,21 @@ impl Solver {
         switch: &Switch,
         pairs: &[[NodeRef; 2]],
     ) -> Result<Self, SolverFailure> {
+        Self::with_plan(circuit, switch, pairs, None)
+    }
+
+    /// As [`Solver::new`] with a plan that served a circuit before; it is taken over when it fits
+    /// this one and is sound at the reference frequencies, so that a change of values alone needs
+    /// no new plan.
+    ///
+    /// # Errors
+    /// See [`SolverFailure`].
+    pub fn with_plan(
+        circuit: &Circuit,
+        switch: &Switch,
+        pairs: &[[NodeRef; 2]],
+        earlier: Option<&Plan>,
+    ) -> Result<Self, SolverFailure> {
         let system = System::new(circuit);
         let n = system.unknowns.len();
         if n == 0 {
@@ -91,13 +106,17 @@ impl Solver {
         } else {
             vec![&on, &off]
         };
-        let plan = Plan::new(
-            std::sync::Arc::clone(&system.pattern),
-            &samples,
-            &reference,
-            &wanted,
-        )
-        .map_err(SolverFailure::Numeric)?;
+        let fits = |plan: &&Plan| plan.serves(&samples, &reference, &wanted);
+        let plan = match earlier.filter(fits) {
+            Some(plan) => plan.clone(),
+            None => Plan::new(
+                std::sync::Arc::clone(&system.pattern),
+                &samples,
+                &reference,
+                &wanted,
+            )
+            .map_err(SolverFailure::Numeric)?,
+        };
         Ok(Self {
             system,
             on,
