@@ -145,7 +145,7 @@ fn coverage_of_the_screen() {
 #[test]
 fn what_cannot_be_computed_is_said() {
     for (card, word) in [
-        ("T1 a 0 b 0 Z0=50 TD=1n", "transmission line"),
+        ("T1 a 0 b 0 cable", "transmission line"),
         ("E1 b 0 LAPLACE a 0 1 / 1 1n", "Laplace"),
         ("Q1 b a 0 fast", "bipolar"),
         ("B1 b 0 V=V(a)", "nonlinear"),

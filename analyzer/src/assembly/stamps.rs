@@ -1,4 +1,4 @@
-//! What each part adds to A(s) = G + s C, in normalised units (volts, and currents times
+//! What each part adds to A(s) = G + s C + sum of D exp(-s tau), in normalised units (volts, and currents times
 //! 50 ohm; s over 2 pi 1 GHz), once as doubles and once exactly in a prime field.
 //!
 //! Signs: rows of nodes say that the currents leaving the node add to zero; a branch current is
@@ -31,6 +31,8 @@ pub struct Stamp {
     pub value: f64,
     /// The entry without rounding; `None` when a value is not finite.
     pub exact: Option<Field61>,
+    /// Delay that multiplies it by exp(-s delay), normalised; zero for none.
+    pub delay: f64,
     /// d ln|entry| / d ln(value of the part): +1 (grows with the value), -1 (a resistor's
     /// conductance) or 0 (an incidence).
     pub power: i8,
@@ -115,6 +117,18 @@ struct Builder<'a> {
 
 impl Builder<'_> {
     fn put(&mut self, row: Option<u32>, column: Option<u32>, with_s: bool, value: Pair, power: i8) {
+        self.put_delayed(row, column, with_s, value, power, 0.0);
+    }
+
+    fn put_delayed(
+        &mut self,
+        row: Option<u32>,
+        column: Option<u32>,
+        with_s: bool,
+        value: Pair,
+        power: i8,
+        delay: f64,
+    ) {
         if let (Some(row), Some(column)) = (row, column) {
             self.out.push(Stamp {
                 part: self.part,
@@ -123,6 +137,7 @@ impl Builder<'_> {
                 with_s,
                 value: value.float,
                 exact: value.exact,
+                delay,
                 power,
             });
         }
@@ -202,15 +217,22 @@ impl Builder<'_> {
                 nodes,
                 control,
                 siemens,
+                delay_s,
             } => {
                 let value = ohm.times(Pair::new(*siemens));
+                let delay = delay_s * REFERENCE_RAD_PER_S;
                 let [p, n] = nodes.map(|node| self.node(node));
                 let [cp, cn] = control.map(|node| self.node(node));
-                self.put(p, cp, false, value, 1);
-                self.put(p, cn, false, value.negative(), 1);
-                self.put(n, cp, false, value.negative(), 1);
-                self.put(n, cn, false, value, 1);
+                self.put_delayed(p, cp, false, value, 1, delay);
+                self.put_delayed(p, cn, false, value.negative(), 1, delay);
+                self.put_delayed(n, cp, false, value.negative(), 1, delay);
+                self.put_delayed(n, cn, false, value, 1, delay);
             }
+            PartKind::Line {
+                nodes,
+                ohm: z0,
+                delay_s,
+            } => self.line(*nodes, *z0, delay_s * REFERENCE_RAD_PER_S),
             PartKind::Cccs { nodes, sense, gain } => {
                 let column = self.unknowns.branch(sense.0);
                 let [p, n] = nodes.map(|node| self.node(node));
@@ -227,6 +249,29 @@ impl Builder<'_> {
                 let value = Pair::new(*r).times(ohm.inverse()).negative();
                 self.put(row, column, false, value, 1);
             }
+        }
+    }
+
+    /// A line in wave form, v1 - Z i1 = exp(-s T) (v2 + Z i2) and its mirror image, with both
+    /// currents into the line: entire in s and regular at s = 0, where the immittance form has poles.
+    fn line(&mut self, nodes: [NodeRef; 4], ohm: f64, delay: f64) {
+        let (one, minus) = (Pair::new(1.0), Pair::new(-1.0));
+        let impedance = Pair::new(ohm).times(Pair::new(REFERENCE_OHM).inverse());
+        let [a, b, c, d] = nodes.map(|node| self.node(node));
+        let first = self.unknowns.branch(self.part);
+        let second = first.map(|row| row + 1);
+        for (own, [plus, reference], other, [far, far_reference]) in [
+            (first, [a, b], second, [c, d]),
+            (second, [c, d], first, [a, b]),
+        ] {
+            self.put(plus, own, false, one, 0);
+            self.put(reference, own, false, minus, 0);
+            self.put(own, plus, false, one, 0);
+            self.put(own, reference, false, minus, 0);
+            self.put(own, own, false, impedance.negative(), 1);
+            self.put_delayed(own, far, false, minus, 0, delay);
+            self.put_delayed(own, far_reference, false, one, 0, delay);
+            self.put_delayed(own, other, false, impedance.negative(), 1, delay);
         }
     }
 

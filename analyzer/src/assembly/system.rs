@@ -4,7 +4,7 @@
 use super::stamps::{REFERENCE_OHM as OHM, REFERENCE_RAD_PER_S as RAD, Stamp, stamps};
 use super::unknowns::Unknowns;
 use crate::circuit::{Circuit, PartId};
-use crate::linalg::exact::ExactEntry;
+use crate::linalg::exact::{ExactEntry, Field61};
 use crate::linalg::pattern::Pattern;
 use crate::linalg::values::Values;
 use std::collections::HashSet;
@@ -73,7 +73,9 @@ impl System {
                 continue;
             }
             // Every stamp is in the pattern by construction.
-            let _ = if stamp.with_s {
+            let _ = if stamp.delay > 0.0 {
+                values.add_delay(stamp.row, stamp.column, stamp.value, stamp.delay)
+            } else if stamp.with_s {
                 values.add_c(stamp.row, stamp.column, stamp.value)
             } else {
                 values.add_g(stamp.row, stamp.column, stamp.value)
@@ -82,14 +84,26 @@ impl System {
         values
     }
 
-    /// The exact entries of G and of C with some sources off; `None` when a value is not finite.
+    /// Whether some part has a delay, so that the system is no pencil G + s C.
+    pub fn has_delays(&self) -> bool {
+        self.stamps.iter().any(|stamp| stamp.delay > 0.0)
+    }
+
+    /// The exact entries of G and of C with some sources off; `None` when a value is not finite. In
+    /// place of exp(-s delay) stands one random element for each delay: det A(s) = 0 for all s only
+    /// if the determinant vanishes whatever the exponentials are.
     pub fn exact(&self, switch: &Switch) -> Option<(Vec<ExactEntry>, Vec<ExactEntry>)> {
         let (mut g, mut c) = (Vec::new(), Vec::new());
         for stamp in &self.stamps {
             if Self::is_off(stamp, switch) {
                 continue;
             }
-            let entry = (stamp.row, stamp.column, stamp.exact?);
+            let mut value = stamp.exact?;
+            if stamp.delay > 0.0 {
+                let bits = stamp.delay.to_bits().wrapping_mul(0x9e37_79b9_7f4a_7c15);
+                value = value * Field61::from_u64(bits | 1);
+            }
+            let entry = (stamp.row, stamp.column, value);
             if stamp.with_s {
                 c.push(entry);
             } else {

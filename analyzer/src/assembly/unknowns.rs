@@ -30,6 +30,9 @@ impl Unknowns {
             if has_branch(&part.kind) {
                 row_of_branch.insert(id, (nodes + branches.len()) as u32);
                 branches.push(id);
+                if matches!(part.kind, PartKind::Line { .. }) {
+                    branches.push(id);
+                }
             }
         }
         Self {
@@ -54,7 +57,7 @@ impl Unknowns {
         node.node().map(|id| id.0)
     }
 
-    /// The row of a part's current, if it has one.
+    /// The row of a part's current, if it has one; that of a line's second end is the next.
     pub fn branch(&self, part: PartId) -> Option<u32> {
         self.row_of_branch.get(&part).copied()
     }
@@ -82,7 +85,8 @@ fn has_branch(kind: &PartKind) -> bool {
         PartKind::Inductor { .. }
         | PartKind::VoltageSource { .. }
         | PartKind::Vcvs { .. }
-        | PartKind::Ccvs { .. } => true,
+        | PartKind::Ccvs { .. }
+        | PartKind::Line { .. } => true,
         _ => false,
     }
 }

@@ -126,6 +126,8 @@ pub enum PartKind {
         control: [NodeRef; 2],
         /// Siemens.
         siemens: f64,
+        /// Pure delay of the gain, seconds: siemens exp(-s delay).
+        delay_s: f64,
     },
     /// Current-controlled current source (F).
     Cccs {
@@ -144,6 +146,15 @@ pub enum PartKind {
         sense: Sense,
         /// Ohms.
         ohm: f64,
+    },
+    /// Ideal transmission line: a wave that enters one end leaves the other after the delay.
+    Line {
+        /// End 1 and its reference, end 2 and its reference.
+        nodes: [NodeRef; 4],
+        /// Characteristic impedance, ohms.
+        ohm: f64,
+        /// Delay, seconds.
+        delay_s: f64,
     },
     /// A part that is read but not computed.
     NotComputed {
@@ -167,6 +178,7 @@ impl PartKind {
             | Self::Vccs { nodes, .. }
             | Self::Cccs { nodes, .. }
             | Self::Ccvs { nodes, .. } => nodes,
+            Self::Line { nodes, .. } => nodes,
             Self::NotComputed { nodes, .. } => nodes,
             Self::Coupling { .. } => &[],
         }
@@ -177,6 +189,14 @@ impl PartKind {
         match self {
             Self::Vcvs { control, .. } | Self::Vccs { control, .. } => control,
             _ => &[],
+        }
+    }
+
+    /// Pure delay, seconds; zero for what responds at once.
+    pub fn delay_s(&self) -> f64 {
+        match self {
+            Self::Vccs { delay_s, .. } | Self::Line { delay_s, .. } => *delay_s,
+            _ => 0.0,
         }
     }
 

@@ -82,6 +82,10 @@ pub fn dc_islands(circuit: &Circuit) -> Vec<Vec<NodeId>> {
             for pair in terminals.windows(2) {
                 islands.join(pair[0], pair[1]);
             }
+        } else if let PartKind::Line { nodes, .. } = &part.kind {
+            // At zero frequency a line joins its ends, conductor by conductor.
+            islands.join(nodes[0], nodes[2]);
+            islands.join(nodes[1], nodes[3]);
         }
     }
     let ground = islands.root(NodeRef::Ground);

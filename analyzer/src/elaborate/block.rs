@@ -479,7 +479,7 @@ impl<'a> BlockBuilder<'a> {
         let mut found: Vec<(String, Span)> = Vec::new();
         for (id, part) in self.block.circuit.numbered_parts() {
             if let PartKind::NotComputed { reason, .. } = &part.kind {
-                let name = part.name.trim_end_matches(".data").trim_end_matches(".tau");
+                let name = part.name.trim_end_matches(".data");
                 let text = format!("`{name}` is {reason}").replace(" is its ", ": its ");
                 if let Some(origin) = self.block.map.part(id) {
                     found.push((text, origin.span()));

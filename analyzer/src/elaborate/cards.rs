@@ -8,7 +8,7 @@ use super::names::{Folded, nearest};
 use super::program::{CardRef, ScopeId};
 use super::source_map::Origin;
 use crate::circuit::{Node, NodeId, NodeRef, Part, PartId, PartKind, PartRole, Sense};
-use crate::syntax::{Card, CardKind, Value, Word};
+use crate::syntax::{Card, CardKind, LineDelay, Value, Word};
 use crate::text::{FileId, Span, TextRange};
 use crate::units::parse_number;
 use std::collections::HashMap;
@@ -73,6 +73,7 @@ impl Flattener<'_> {
                 nodes: [p, n],
                 control: [cp, cn],
                 siemens: number * m,
+                delay_s: 0.0,
             },
             _ => return None,
         };
@@ -87,6 +88,48 @@ impl Flattener<'_> {
         );
         matches!(card.letter, 'v' | 'l').then_some(id)
     }
+
+    /// T: an ideal line.
+    #[allow(clippy::too_many_arguments)] // a card with its place, its nodes and its values
+    pub(super) fn line(
+        &self,
+        work: &mut Work,
+        instance: &Instance,
+        card_ref: CardRef,
+        card: &Card,
+        nodes: &[NodeRef],
+        z0: Value,
+        delay: LineDelay,
+    ) {
+        let mut read = |value: Value| self.value(work, instance, card_ref.file, value);
+        let ohm = read(z0);
+        let delay_s = match delay {
+            LineDelay::PerLength { delay, length } => read(delay)
+                .zip(length.map_or(Some(1.0), &mut read))
+                .map(|(t, l)| t * l),
+            LineDelay::Wavelengths { hz, wavelengths } => read(hz)
+                .zip(wavelengths.map_or(Some(0.25), &mut read))
+                .map(|(hz, n)| n / hz),
+        };
+        let m = instance.multiplier * self.multiplier(work, instance, card_ref, card);
+        let (Some(ohm), Some(delay_s), &[a, b, c, d]) = (ohm, delay_s, nodes) else {
+            self.gap(work, card_ref, card, "the value of a card is not known");
+            return;
+        };
+        let possible = ohm > 0.0 && ohm.is_finite() && delay_s >= 0.0 && delay_s.is_finite();
+        if !possible {
+            let reason = "a line needs an impedance above zero and a delay that is not negative";
+            self.gap(work, card_ref, card, reason);
+            return;
+        }
+        let kind = PartKind::Line {
+            nodes: [a, b, c, d],
+            ohm: ohm / m,
+            delay_s,
+        };
+        self.add(work, instance, card_ref, card, None, kind, z0.range);
+    }
+
     /// K F H: cards that name other parts.
     pub(super) fn referring_card(
         &self,

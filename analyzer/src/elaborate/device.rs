@@ -39,14 +39,11 @@ pub(super) fn stand_in(
             },
         )]);
     }
-    if mark.value("tau").is_some_and(|tau| tau != 0.0) {
-        return Ok(vec![PartSpec::new(
-            "tau",
-            PartKind::NotComputed {
-                nodes: nodes.to_vec(),
-                reason: "its stand-in has a delay (tau), which is not computed yet; leave tau out to screen without it".to_owned(),
-            },
-        )]);
+    if let Some(tau) = mark
+        .value("tau")
+        .filter(|tau| *tau < 0.0 || !tau.is_finite())
+    {
+        return Err(format!("tau= must be a delay of zero or more, not {tau}"));
     }
     let bipolar = ["rpi", "cpi", "cmu", "ro", "rb", "re", "rc"];
     let has_bipolar = bipolar.iter().any(|key| mark.value(key).is_some());
@@ -137,6 +134,7 @@ impl Builder<'_> {
                 nodes,
                 control,
                 siemens,
+                delay_s: self.mark.value("tau").unwrap_or(0.0),
             },
         ));
         Ok(())

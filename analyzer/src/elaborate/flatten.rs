@@ -315,6 +315,10 @@ impl<'p> Flattener<'p> {
                 self.add_not_computed(work, instance, card_ref, card, nodes, reason);
                 None
             }
+            CardKind::Line { z0, delay, .. } => {
+                self.line(work, instance, card_ref, card, nodes, *z0, *delay);
+                None
+            }
             CardKind::NotComputed { what, .. } => {
                 let reason = format!("{what}, which is not computed yet");
                 self.add_not_computed(work, instance, card_ref, card, nodes, reason);
@@ -505,10 +509,12 @@ pub(super) fn scaled(kind: PartKind, m: f64) -> PartKind {
             nodes,
             control,
             siemens,
+            delay_s,
         } => PartKind::Vccs {
             nodes,
             control,
             siemens: siemens * m,
+            delay_s,
         },
         other => other,
     }

@@ -116,6 +116,13 @@ fn why(block: &BlockCircuit, screen: Option<&Screen>, verdict: Verdict) -> Optio
         if screen.too_many_states.is_some() {
             reasons.push("modes counted by the phase of the determinant only".to_owned());
         }
+        if let (Some([low, high]), true) = (screen.delays_followed_hz, screen.doubt.is_none()) {
+            reasons.push(format!(
+                "with delays, modes are counted from {} to {} and taken to end there",
+                crate::units::hertz(low),
+                crate::units::hertz(high)
+            ));
+        }
         if verdict == Verdict::Stable {
             reasons.extend(port_note(screen));
         }

@@ -31,6 +31,18 @@ pub struct Polynomial<'a> {
     pub known: &'a [Complex64],
 }
 
+impl<'a> Polynomial<'a> {
+    /// A determinant of which nothing is known but its values.
+    pub(super) fn open(values: &'a Values) -> Self {
+        Self {
+            values,
+            degree: 0,
+            at_zero: 0,
+            known: &[],
+        }
+    }
+}
+
 impl Polynomial<'_> {
     /// d ln det / d ln s by the known roots.
     fn predicted_slope(&self, s: Complex64) -> Option<Complex64> {
@@ -115,13 +127,7 @@ pub fn right_half_plane_roots(
     seeds: &[f64],
     stop: &dyn Fn() -> bool,
 ) -> Result<Count, CountFailure> {
-    let mut walker = Walker {
-        plan,
-        polynomials,
-        workspace: plan.workspace(),
-        evaluations: 0,
-        stop,
-    };
+    let mut walker = Walker::new(plan, polynomials, stop);
     let finite = || seeds.iter().copied().filter(|w| *w > 0.0 && w.is_finite());
     let low = finite().fold(1.0, f64::min);
     let high = finite().fold(1.0, f64::max);
@@ -140,15 +146,16 @@ pub fn right_half_plane_roots(
 
 /// Values of all determinants at one point of the ray.
 #[derive(Debug, Clone)]
-struct Sample {
-    w: f64,
+pub(super) struct Sample {
+    pub(super) w: f64,
     /// ln det, phase in -pi..pi.
-    ln: Vec<Complex64>,
+    pub(super) ln: Vec<Complex64>,
     /// d ln det / d ln w.
-    slope: Vec<Complex64>,
+    pub(super) slope: Vec<Complex64>,
 }
 
-struct Walker<'a> {
+/// Evaluates and follows the determinants along the ray.
+pub(super) struct Walker<'a> {
     plan: &'a Plan,
     polynomials: &'a [Polynomial<'a>],
     workspace: Workspace,
@@ -156,8 +163,29 @@ struct Walker<'a> {
     stop: &'a dyn Fn() -> bool,
 }
 
+impl<'a> Walker<'a> {
+    pub(super) fn new(
+        plan: &'a Plan,
+        polynomials: &'a [Polynomial<'a>],
+        stop: &'a dyn Fn() -> bool,
+    ) -> Self {
+        Self {
+            plan,
+            polynomials,
+            workspace: plan.workspace(),
+            evaluations: 0,
+            stop,
+        }
+    }
+}
+
 impl Walker<'_> {
-    fn samples(&mut self, w: &[f64]) -> Result<Vec<Sample>, CountFailure> {
+    /// Points evaluated so far.
+    pub(super) fn evaluations(&self) -> usize {
+        self.evaluations
+    }
+
+    pub(super) fn samples(&mut self, w: &[f64]) -> Result<Vec<Sample>, CountFailure> {
         let mut out: Vec<Sample> = w
             .iter()
             .map(|&w| Sample {
@@ -242,14 +270,15 @@ impl Walker<'_> {
         }
     }
 
-    /// Adds up the phase from `first` to `last` by adaptive steps.
-    fn walk(
+    /// Adds up the phase from `first` to `last` by adaptive steps. Returns the lower ends of all
+    /// steps, and the last point.
+    pub(super) fn walk(
         &mut self,
         first: &Sample,
         last: &Sample,
         inside: &[f64],
         turned: &mut [f64],
-    ) -> Result<(), CountFailure> {
+    ) -> Result<Vec<Sample>, CountFailure> {
         let mut points = vec![first.clone()];
         points.extend(self.samples(inside)?);
         points.push(last.clone());
@@ -257,6 +286,7 @@ impl Walker<'_> {
             .windows(2)
             .map(|pair| (pair[0].clone(), pair[1].clone()))
             .collect();
+        let mut seen = vec![last.clone()];
         while !open.is_empty() {
             let mut middles = Vec::new();
             let mut failing = Vec::new();
@@ -265,6 +295,7 @@ impl Walker<'_> {
                     for (sum, (x, y)) in turned.iter_mut().zip(a.ln.iter().zip(&b.ln)) {
                         *sum += wrapped(y.im - x.im);
                     }
+                    seen.push(a);
                 } else {
                     if b.w <= a.w * (1.0 + NARROWEST) {
                         return Err(self.open_interval(&a, &b));
@@ -285,7 +316,7 @@ impl Walker<'_> {
                 open.push((middle, b));
             }
         }
-        Ok(())
+        Ok(seen)
     }
 
     fn open_interval(&self, a: &Sample, b: &Sample) -> CountFailure {
@@ -371,6 +402,6 @@ fn wrapped(angle: f64) -> f64 {
 }
 
 /// An angle's distance from the nearest multiple of pi.
-fn near_real(angle: f64) -> f64 {
+pub(super) fn near_real(angle: f64) -> f64 {
     angle - PI * (angle / PI).round()
 }

@@ -10,7 +10,10 @@ use crate::linalg::workspace::{
     GROWTH_LIMIT, Patch, ROUGH_GROWTH_LIMIT, Stage, Workspace, on_lanes,
 };
 use num_complex::Complex64;
-use std::sync::Arc;
+use std::sync::{Arc, MutexGuard, PoisonError};
+
+/// Plans for single points that are kept.
+const SPARES: usize = 6;
 
 /// Which system a solve treats.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -141,6 +144,9 @@ impl Plan {
                 growth: f64::NAN,
             });
         }
+        if let Some(patch) = self.spare_patch(values, s) {
+            return Ok(patch);
+        }
         let plan = match Self::for_point(values, s, &self.core.wanted) {
             Err(NumericError::Singular { .. }) => return Err(NumericError::SingularPoint { s }),
             other => other?,
@@ -153,7 +159,38 @@ impl Plan {
                 growth: workspace.growth(0),
             });
         }
+        let mut spares = self.spares();
+        spares.insert(0, plan.clone());
+        spares.truncate(SPARES);
+        drop(spares);
         Ok(Patch { plan, workspace })
+    }
+
+    /// The point by a plan that was made for another one, if one serves: that costs a factorisation
+    /// and no search.
+    fn spare_patch(&self, values: &Values, s: Complex64) -> Option<Patch> {
+        let tried = self.spares().clone();
+        for (k, plan) in tried.into_iter().enumerate() {
+            let mut workspace = plan.workspace();
+            let factored = plan.factor(values, &[s], &mut workspace);
+            if factored.is_ok() && workspace.is_sound(0) {
+                let mut spares = self.spares();
+                if k < spares.len() {
+                    spares[..=k].rotate_right(1);
+                }
+                drop(spares);
+                return Some(Patch { plan, workspace });
+            }
+        }
+        None
+    }
+
+    fn spares(&self) -> MutexGuard<'_, Vec<Plan>> {
+        // The list is whole whatever happened to another thread.
+        self.core
+            .spares
+            .lock()
+            .unwrap_or_else(PoisonError::into_inner)
     }
 
     /// Computes the selected entries of the inverse and d ln det / ds from the

@@ -4,9 +4,10 @@
 //! `pattern` and `values` hold the problem, `plan` chooses a pivot order once,
 //! `evaluate` and `workspace` give determinants, inverse entries and solutions
 //! for many frequencies, `exact`, `eigen`, `polish` find the modes, `count` the
-//! encirclements; `dense` is the slow oracle for checks.
+//! encirclements; `band` and `search` do so where there are delays; `dense` is the slow oracle for checks.
 
 mod apart;
+pub mod band;
 pub mod count;
 pub mod dense;
 pub mod det;
@@ -26,6 +27,7 @@ pub mod pattern;
 pub mod plan;
 pub mod polish;
 mod program;
+pub mod search;
 mod selected;
 #[cfg(test)]
 mod testing;

@@ -14,7 +14,7 @@ use crate::linalg::selected::Selected;
 use crate::linalg::values::Values;
 use crate::linalg::workspace::Workspace;
 use num_complex::Complex64;
-use std::sync::Arc;
+use std::sync::{Arc, Mutex};
 
 /// Factor entries above which 16 lanes leave the second-level cache (1 MiB at
 /// 128 bytes an entry and 8 lanes), so that 8 lanes are faster.
@@ -47,6 +47,8 @@ pub(crate) struct Core {
     pub(crate) position_of: Vec<(u32, u32)>,
     pub(crate) wanted: Vec<(u32, u32)>,
     pub(crate) references: Vec<Complex64>,
+    /// Plans made for single points where this one failed, the one used last first.
+    pub(crate) spares: Mutex<Vec<Plan>>,
 }
 
 /// Pivot order and operation lists for one sparsity pattern.
@@ -200,6 +202,7 @@ impl Plan {
             position_of: Vec::new(),
             wanted: wanted.to_vec(),
             references: references.to_vec(),
+            spares: Mutex::default(),
             program,
             selected,
             pattern,

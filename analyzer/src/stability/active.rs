@@ -74,9 +74,12 @@ fn own_port(circuit: &Circuit, id: PartId, kind: &PartKind) -> Own {
             nodes,
             control,
             siemens,
+            delay_s,
         } => {
             if *siemens == 0.0 || nodes[0] == nodes[1] || control[0] == control[1] {
                 Own::None
+            } else if *delay_s > 0.0 {
+                Own::No
             } else if nodes == control {
                 by_sign(*siemens)
             } else if nodes[0] == control[1] && nodes[1] == control[0] {
@@ -239,7 +242,8 @@ fn output_terms(
             nodes,
             control,
             siemens,
-        } => Some((across(nodes, 1.0), across(control, *siemens))),
+            delay_s,
+        } => (*delay_s == 0.0).then(|| (across(nodes, 1.0), across(control, *siemens))),
         PartKind::Cccs { nodes, sense, gain } => Some((
             across(nodes, 1.0),
             vec![(Variable::Current(sense.0), *gain)],

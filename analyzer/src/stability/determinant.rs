@@ -100,7 +100,7 @@ fn whole_plane(modes: Option<&Modes>) -> Vec<Complex64> {
     modes.map_or_else(Vec::new, |modes| modes.whole_plane().collect())
 }
 
-fn in_words(failure: &CountFailure) -> DeterminantFailure {
+pub(super) fn in_words(failure: &CountFailure) -> DeterminantFailure {
     let (reason, failed_hz, evaluations) = match failure {
         CountFailure::Unresolved {
             low,

@@ -3,6 +3,7 @@
 //! by number; knows no text.
 
 mod active;
+mod delayed;
 mod determinant;
 mod driving_point;
 mod impedance;
@@ -21,12 +22,12 @@ pub use driving_point::{
 };
 pub use impedance::Probe;
 pub use modes::{
-    AXIS_TOLERANCE, Mode, ModeFailure, Modes, Participation, natural_modes, participation,
+    AXIS_TOLERANCE, LISTED_DAMPING, Mode, ModeFailure, Modes, Participation, natural_modes,
+    participation,
 };
 pub use probe::{Solver, SolverFailure};
 pub use screen::{
-    Doubt, Earlier, LISTED_DAMPING, ListedMode, Screen, ScreenRequest, screen, screen_from,
-    solver_of,
+    Doubt, Earlier, ListedMode, Screen, ScreenRequest, screen, screen_from, solver_of,
 };
 pub use two_port::{Factors, TwoPort, TwoPortWatch, factors, scattering};
 pub use verdict::{Sight, Verdict};

@@ -49,6 +49,9 @@ impl Mode {
 /// Largest |Re s|/|s| that counts as on the axis.
 pub const AXIS_TOLERANCE: f64 = 1e-9;
 
+/// Modes of less damping are listed.
+pub const LISTED_DAMPING: f64 = 0.5;
+
 /// All finite modes.
 #[derive(Clone, PartialEq, Debug, Default)]
 pub struct Modes {
@@ -244,17 +247,19 @@ fn shares(
     let mut parts = vec![Complex64::default(); circuit.parts.len()];
     for stamp in &solver.system.stamps {
         let product = at(left, stamp.row) * at(&right, stamp.column) * stamp.value;
-        if stamp.with_s
-            && let Some(sum) = state.get_mut(stamp.column as usize)
-        {
-            *sum += product;
+        // The entry is value * factor; its derivative in s is value * slope.
+        let (factor, slope) = if stamp.delay > 0.0 {
+            let factor = (-s * stamp.delay).exp();
+            (factor, -stamp.delay * factor)
+        } else if stamp.with_s {
+            (s, Complex64::new(1.0, 0.0))
+        } else {
+            (Complex64::new(1.0, 0.0), Complex64::default())
+        };
+        if let Some(sum) = state.get_mut(stamp.column as usize) {
+            *sum += product * slope;
         }
         let weight = f64::from(stamp.power);
-        let factor = if stamp.with_s {
-            s
-        } else {
-            Complex64::new(1.0, 0.0)
-        };
         if let Some(sum) = parts.get_mut(stamp.part.0 as usize) {
             *sum += product * factor * weight;
         }

@@ -50,6 +50,8 @@ pub enum SolverFailure {
 
 /// Frequencies at which the pivot order is checked, hertz: the range that real circuits live in.
 const REFERENCES_HZ: [f64; 4] = [1e3, 5e5, 2.5e8, 1e11];
+/// With delays the determinant is followed above the sweep, until it settles.
+const DELAYED_REFERENCE_HZ: f64 = 1e12;
 
 impl Solver {
     /// Assembles a circuit and plans its factorisation. `switch` names the sources that are
@@ -100,7 +102,12 @@ impl Solver {
         let off = system.values(switch);
         let mut wanted = wanted(&system, pairs);
         wanted.extend(two_port::wanted(circuit, &system.unknowns));
-        let reference: Vec<f64> = REFERENCES_HZ.iter().map(|hz| normalised_rad(*hz)).collect();
+        let above = system.has_delays().then_some(DELAYED_REFERENCE_HZ);
+        let reference: Vec<f64> = REFERENCES_HZ
+            .into_iter()
+            .chain(above)
+            .map(normalised_rad)
+            .collect();
         let samples: Vec<&Values> = if off_structure.singular {
             vec![&on]
         } else {

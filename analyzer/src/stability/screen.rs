@@ -1,10 +1,12 @@
 //! The screen of one circuit: all methods from one system, compared with each other.
 
 use super::active::{ActiveSet, active_sources};
+use super::delayed;
 use super::determinant::{Determinant, DeterminantFailure, count};
 use super::driving_point::{DrivingPoint, driving_points};
 use super::modes::{
-    AXIS_TOLERANCE, Mode, ModeFailure, Modes, Participation, natural_modes, participation,
+    AXIS_TOLERANCE, LISTED_DAMPING, Mode, ModeFailure, Modes, Participation, natural_modes,
+    participation,
 };
 use super::probe::{Solver, SolverFailure};
 use super::two_port::{TwoPort, TwoPortWatch};
@@ -33,8 +35,6 @@ pub struct ScreenRequest<'a> {
     pub states: usize,
 }
 
-/// Modes of less damping are listed.
-pub const LISTED_DAMPING: f64 = 0.5;
 /// A part takes part in a mode from this share on ..
 const TAKES_PART: f64 = 0.01;
 /// .. or when a change of its value moves the mode by this much of its distance from the axis: a
@@ -92,6 +92,9 @@ pub struct Screen {
     pub off_modes: Option<Modes>,
     /// Too many states for exact modes: how many.
     pub too_many_states: Option<usize>,
+    /// With delays, the band (hertz) that was followed: the counts are of what lies within, and
+    /// `modes` holds those that were found.
+    pub delays_followed_hz: Option<[f64; 2]>,
     /// Modes of little damping and the one of largest growth, growth falling.
     pub listed: Vec<ListedMode>,
     /// Counts by the normalized determinant.
@@ -120,6 +123,7 @@ impl Screen {
             modes: None,
             off_modes: None,
             too_many_states: None,
+            delays_followed_hz: None,
             listed: Vec::new(),
             determinant: None,
             driving: Vec::new(),
@@ -132,6 +136,9 @@ impl Screen {
     /// Right-half-plane modes, from the modes or, beyond their limit, from the determinant.
     pub fn unstable_modes(&self) -> Option<usize> {
         match (&self.modes, &self.determinant) {
+            (_, Some(determinant)) if self.delays_followed_hz.is_some() => {
+                Some(determinant.on_roots)
+            }
             (Some(modes), _) => Some(modes.unstable()),
             (None, Some(determinant)) => Some(determinant.on_roots),
             (None, None) => None,
@@ -153,6 +160,12 @@ impl Screen {
     }
 }
 
+/// The active sources that are judged: those that are switched off for comparison.
+fn judged_sources(request: &ScreenRequest<'_>, active: &ActiveSet) -> Vec<PartId> {
+    let judged = |id: &PartId| request.judged.is_none_or(|judged| judged.contains(id));
+    active.sources.iter().copied().filter(judged).collect()
+}
+
 /// The solver of a request: the judged active sources are those that are switched off.
 ///
 /// # Errors
@@ -166,11 +179,7 @@ fn solver_from(
     active: &ActiveSet,
     earlier: Option<&Plan>,
 ) -> Result<Solver, SolverFailure> {
-    let off = active
-        .sources
-        .iter()
-        .copied()
-        .filter(|id| request.judged.is_none_or(|judged| judged.contains(id)));
+    let off = judged_sources(request, active);
     let pairs: Vec<[NodeRef; 2]> = Vec::new();
     Solver::with_plan(request.circuit, &Switch::off(off), &pairs, earlier)
 }
@@ -247,6 +256,16 @@ fn doubt_of(circuit: &Circuit, failure: SolverFailure) -> Doubt {
     }
 }
 
+/// What the modes and the determinants say.
+struct Counted {
+    modes: Option<Modes>,
+    off: Option<Modes>,
+    too_many_states: Option<usize>,
+    delays_followed_hz: Option<[f64; 2]>,
+    mode_doubt: Option<Doubt>,
+    counted: Result<Determinant, DeterminantFailure>,
+}
+
 struct Work<'a> {
     request: &'a ScreenRequest<'a>,
     cancel: &'a Cancel,
@@ -258,30 +277,18 @@ impl Work<'_> {
     fn run(&self, active: ActiveSet) -> Result<Screen, Cancelled> {
         let unknowns = self.solver.system.unknowns.len();
         let stop = || self.cancel.is_set();
-        let states = self.request.states;
-        let before = |off: bool| {
-            let earlier = self.earlier?;
-            if off { &earlier.off } else { &earlier.on }.as_ref()
-        };
-        let on = natural_modes(self.solver, false, states, before(false), &stop);
-        self.cancel.check()?;
-        let off = if self.solver.off_structure.singular {
-            None
+        let Counted {
+            modes,
+            off,
+            too_many_states,
+            delays_followed_hz,
+            mode_doubt,
+            counted,
+        } = if self.solver.system.has_delays() {
+            self.count_with_delays(&active)?
         } else {
-            natural_modes(self.solver, true, states, before(true), &stop).ok()
+            self.count_lumped()?
         };
-        self.cancel.check()?;
-        let too_many_states = match &on {
-            Err(ModeFailure::TooMany { states }) => Some(*states),
-            _ => None,
-        };
-        let mode_doubt = match &on {
-            Err(ModeFailure::Numeric(error)) => Some(Doubt::Numeric(error.to_string())),
-            _ => None,
-        };
-        let modes = on.ok();
-        let counted = count(self.solver, modes.as_ref(), off.as_ref(), &stop);
-        self.cancel.check()?;
         let listed = match &modes {
             Some(modes) => self.list(modes, off.as_ref(), &active),
             None => Ok(Vec::new()),
@@ -308,7 +315,10 @@ impl Work<'_> {
         };
         let disagreement = determinant
             .as_ref()
-            .and_then(|d| disagreement(modes.as_ref(), off.as_ref(), d))
+            .and_then(|d| match delays_followed_hz {
+                Some(_) => delayed_disagreement(modes.as_ref(), d),
+                None => disagreement(modes.as_ref(), off.as_ref(), d),
+            })
             .map(Doubt::Disagree);
         let doubt = mode_doubt
             .or(count_doubt)
@@ -328,12 +338,92 @@ impl Work<'_> {
             modes,
             off_modes: off,
             too_many_states,
+            delays_followed_hz,
             listed,
             determinant,
             driving,
             two_port: two_port.finish(),
             doubt,
             verdict,
+        })
+    }
+
+    /// Exact modes, and the counts of both determinants.
+    fn count_lumped(&self) -> Result<Counted, Cancelled> {
+        let stop = || self.cancel.is_set();
+        let states = self.request.states;
+        let before = |off: bool| {
+            let earlier = self.earlier?;
+            if off { &earlier.off } else { &earlier.on }.as_ref()
+        };
+        let on = natural_modes(self.solver, false, states, before(false), &stop);
+        self.cancel.check()?;
+        let off = if self.solver.off_structure.singular {
+            None
+        } else {
+            natural_modes(self.solver, true, states, before(true), &stop).ok()
+        };
+        self.cancel.check()?;
+        let too_many_states = match &on {
+            Err(ModeFailure::TooMany { states }) => Some(*states),
+            _ => None,
+        };
+        let mode_doubt = match &on {
+            Err(ModeFailure::Numeric(error)) => Some(Doubt::Numeric(error.to_string())),
+            _ => None,
+        };
+        let modes = on.ok();
+        let counted = count(self.solver, modes.as_ref(), off.as_ref(), &stop);
+        self.cancel.check()?;
+        Ok(Counted {
+            modes,
+            off,
+            too_many_states,
+            delays_followed_hz: None,
+            mode_doubt,
+            counted,
+        })
+    }
+
+    /// With delays: what can be counted and found in the band of the sweep.
+    fn count_with_delays(&self, active: &ActiveSet) -> Result<Counted, Cancelled> {
+        let stop = || self.cancel.is_set();
+        let band_hz = self
+            .request
+            .sweep_hz
+            .unwrap_or(self.request.default_sweep_hz);
+        let off = judged_sources(self.request, active);
+        let found = delayed::judge(
+            self.solver,
+            self.request.circuit,
+            &off,
+            active,
+            band_hz,
+            &stop,
+        );
+        self.cancel.check()?;
+        Ok(match found {
+            Ok(found) => Counted {
+                modes: Some(found.modes),
+                off: None,
+                too_many_states: None,
+                delays_followed_hz: Some(found.band_hz),
+                mode_doubt: None,
+                counted: found.counted,
+            },
+            Err(error) => Counted {
+                modes: None,
+                off: None,
+                too_many_states: None,
+                delays_followed_hz: Some(band_hz),
+                mode_doubt: Some(Doubt::Numeric(error.to_string())),
+                counted: Err(DeterminantFailure {
+                    stopped: false,
+                    reason: error.to_string(),
+                    failed_hz: None,
+                    evaluations: 0,
+                }),
+            },
         })
     }
 
@@ -424,6 +514,17 @@ impl Work<'_> {
         nodes.dedup();
         Some(nodes)
     }
+}
+
+/// As [`disagreement`] with delays: the modes were sought, and not all need have been found.
+fn delayed_disagreement(modes: Option<&Modes>, determinant: &Determinant) -> Option<String> {
+    let found = modes?.unstable();
+    let counted = determinant.on_roots;
+    (found > counted || (found == 0 && counted > 0)).then(|| {
+        format!(
+            "{found} right-half-plane modes were found, but the phase of the determinant counts {counted}"
+        )
+    })
 }
 
 /// What two methods contradict each other about, in words.

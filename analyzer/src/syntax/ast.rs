@@ -133,12 +133,40 @@ pub enum CardKind {
         /// The model's name.
         model: Word,
     },
+    /// `T`: an ideal transmission line of two conductors.
+    Line {
+        /// in, its reference, out, its reference.
+        nodes: [Word; 4],
+        /// Characteristic impedance, ohms.
+        z0: Value,
+        /// How its delay is written.
+        delay: LineDelay,
+    },
     /// A card that is read but not computed; `what` says it in words.
     NotComputed {
         /// The nodes it touches, as far as the card tells.
         nodes: Vec<Word>,
         /// What it is, for messages.
         what: &'static str,
+    },
+}
+
+/// The delay of a `T` card, as IBIS-ISS 1.0 writes it.
+#[derive(Clone, Copy, PartialEq, Debug)]
+pub enum LineDelay {
+    /// `TD=` seconds, for each unit of the length `L=` (1 when not written).
+    PerLength {
+        /// `TD=`.
+        delay: Value,
+        /// `L=`.
+        length: Option<Value>,
+    },
+    /// `F=` hertz at which the line is `NL=` wavelengths long (a quarter when not written).
+    Wavelengths {
+        /// `F=`.
+        hz: Value,
+        /// `NL=`.
+        wavelengths: Option<Value>,
     },
 }
 
@@ -149,7 +177,7 @@ impl CardKind {
             Self::TwoTerminal { nodes, .. }
             | Self::Source { nodes, .. }
             | Self::CurrentControlled { nodes, .. } => nodes,
-            Self::VoltageControlled { nodes, .. } => nodes,
+            Self::VoltageControlled { nodes, .. } | Self::Line { nodes, .. } => nodes,
             Self::Instance { nodes, .. }
             | Self::Device { nodes, .. }
             | Self::NotComputed { nodes, .. } => nodes,

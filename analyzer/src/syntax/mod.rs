@@ -11,7 +11,8 @@ mod lexer;
 mod tree;
 
 pub use ast::{
-    Card, CardKind, Dot, IncludePath, Mark, Param, ParamDef, Statement, StatementKind, Value, Word,
+    Card, CardKind, Dot, IncludePath, LineDelay, Mark, Param, ParamDef, Statement, StatementKind,
+    Value, Word,
 };
 pub use error::{SyntaxError, SyntaxErrorKind};
 pub use grammar::{FileRole, Parse, parse};

@@ -52,13 +52,16 @@ const ALIKE: f64 = 1e-3;
 fn check(context: &BlockContext<'_>, out: &mut Vec<Finding>) {
     let Some(screen) = context.screen else { return };
     let mut told: Vec<(Span, &ListedMode, usize)> = Vec::new();
+    // A delay loop has modes without end, all of one cause.
+    let delayed = screen.delays_followed_hz.is_some();
     for listed in screen.growing() {
         let span = culprit(context, listed)
             .and_then(|part| context.part_span(part))
             .unwrap_or(context.block.span);
         let s = listed.mode.s_rad_per_s;
         let same = told.iter_mut().find(|(place, other, _)| {
-            *place == span && (other.mode.s_rad_per_s - s).norm() <= ALIKE * s.norm()
+            let alike = (other.mode.s_rad_per_s - s).norm() <= ALIKE * s.norm();
+            *place == span && (alike || delayed)
         });
         match same {
             Some((_, _, count)) => *count += 1,
@@ -102,7 +105,7 @@ fn finding(context: &BlockContext<'_>, span: Span, listed: &ListedMode, count: u
     let (hz, growth) = (listed.mode.hz(), listed.mode.growth_per_s());
     let kind = match (hz > 0.0, count) {
         (true, 1) => format!("{} natural mode grows", hertz(hz)),
-        (true, n) => format!("{} natural modes grow at {}", n, hertz(hz)),
+        (true, n) => format!("{n} natural modes grow, the fastest at {}", hertz(hz)),
         (false, 1) => "real natural mode (0 Hz) grows".to_owned(),
         (false, n) => format!("{n} real natural modes (0 Hz) grow"),
     };

@@ -3,7 +3,7 @@
 
 use super::fault;
 use super::fields::Field;
-use crate::syntax::ast::{Card, CardKind, Param, Value, Word};
+use crate::syntax::ast::{Card, CardKind, LineDelay, Param, Value, Word};
 use crate::syntax::error::{SyntaxError, SyntaxErrorKind};
 use crate::syntax::expr;
 use crate::syntax::tree::Tree;
@@ -103,7 +103,7 @@ impl Fields<'_> {
             'q' => self.device(3, 4, "collector, base, emitter and a model"),
             'j' | 'z' => self.device(3, 3, "drain, gate, source and a model"),
             'm' => self.device(4, 4, "drain, gate, source, bulk and a model"),
-            't' => self.not_computed(4, "four nodes", "a transmission line (T)"),
+            't' => self.line(),
             'w' => self.multiport("a coupled line (W)", "a current-controlled switch (W)"),
             's' => self.multiport(
                 "an S-parameter block (S)",
@@ -369,6 +369,31 @@ impl Fields<'_> {
             nodes: nodes_found,
             what,
         })
+    }
+
+    /// An ideal line, by its impedance and its delay; any other T card is lossy or has a model.
+    fn line(&mut self) -> Option<CardKind> {
+        let delay = match (self.param(&["td"]), self.param(&["f"])) {
+            (Some(delay), _) => Some(LineDelay::PerLength {
+                delay,
+                length: self.param(&["l"]),
+            }),
+            (None, Some(hz)) => Some(LineDelay::Wavelengths {
+                hz,
+                wavelengths: self.param(&["nl"]),
+            }),
+            (None, None) => None,
+        };
+        match (self.nodes::<4>(), self.param(&["z0", "zo"]), delay) {
+            (Some(nodes), Some(z0), Some(delay)) if self.words.len() == 4 => {
+                Some(CardKind::Line { nodes, z0, delay })
+            }
+            _ => self.not_computed(
+                4,
+                "four nodes",
+                "a transmission line (T) without Z0= and TD= or F=",
+            ),
+        }
     }
 
     /// S and W are told apart from switches by their fields: a block names its data by a key.
