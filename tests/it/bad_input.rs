@@ -116,6 +116,52 @@ fn one_bad_line_takes_nothing_from_the_others() {
     }
 }
 
+#[test]
+fn a_seeded_bad_line_anywhere_takes_nothing_from_the_others() {
+    const CUT: [&str; 8] = [
+        "R9 a b 4k7x9",
+        "C9 node1 0",
+        "L9 a",
+        "G9 a b c 1m",
+        "K9 L1",
+        "X9",
+        ".subckt foo a b",
+        "V9 a",
+    ];
+    let sound = Loaded::text(SOUND);
+    let want = told(&sound, SOUND, None);
+    let lines: Vec<&str> = SOUND.lines().collect();
+    let mut random = Random(0x5eed_bad0_11fe);
+    for _ in 0..160 {
+        let mut bad = CUT[random.below(CUT.len())].to_owned();
+        if random.below(3) == 0 && !bad.starts_with('.') {
+            bad.push_str(["'", " {1", " =", "\u{1F30A}("][random.below(4)]);
+        }
+        // After the title, before the last line: anywhere in between.
+        let at = 1 + random.below(lines.len() - 1);
+        // A `+` line must stay with its card.
+        if lines[at].starts_with('+') || lines[at].starts_with("*~+") {
+            continue;
+        }
+        // Within a subcircuit an `.ends` without a name closes the inner one of two.
+        let before = |word: &str| lines[..at].iter().filter(|l| l.starts_with(word)).count();
+        if bad.starts_with('.') && before(".subckt") > before(".ends") {
+            continue;
+        }
+        let mut all = lines.clone();
+        all.insert(at, &bad);
+        let text = all.join("\n") + "\n";
+        let loaded = Loaded::text(&text);
+        let got = told(&loaded, &text, Some(at as u32 + 1));
+        let lost: Vec<_> = want.iter().filter(|w| !got.contains(w)).collect();
+        assert!(
+            lost.is_empty(),
+            "{bad} at {}: lost {lost:?}\ngot {got:?}",
+            at + 1
+        );
+    }
+}
+
 /// SplitMix64 (G. L. Steele, D. Lea, C. H. Flood, OOPSLA 2014, from memory).
 struct Random(u64);
 

@@ -4,6 +4,7 @@
 mod amplifiers;
 mod bad_input;
 mod cli;
+mod honest_verdicts;
 mod load;
 mod random_amplifiers;
 mod rules_table;

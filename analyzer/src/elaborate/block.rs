@@ -280,6 +280,18 @@ impl<'a> BlockBuilder<'a> {
             .map(|(id, _)| id)
     }
 
+    /// Whether a V source has nothing in series with it.
+    fn is_ideal(&self, id: PartId) -> bool {
+        match self.block.circuit.part(id).map(|part| &part.kind) {
+            Some(PartKind::VoltageSource {
+                series_ohm,
+                series_henry,
+                ..
+            }) => *series_ohm == 0.0 && *series_henry == 0.0,
+            _ => false,
+        }
+    }
+
     fn rail(&mut self, node: NodeRef, span: Span, ohm: f64, henry: f64, has_impedance: bool) {
         self.assigned.push(node);
         if node == NodeRef::Ground {
@@ -384,7 +396,7 @@ impl<'a> BlockBuilder<'a> {
         self.assigned.push(at);
         let port = word.name.name.clone();
         let span = word.name.span;
-        if let Some(part) = self.source_at(at) {
+        if let Some(part) = self.source_at(at).filter(|id| self.is_ideal(*id)) {
             self.block
                 .terminations
                 .push(TerminationFault::PortShorted { port, span, part });

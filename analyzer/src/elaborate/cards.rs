@@ -178,13 +178,13 @@ impl Flattener<'_> {
                     PartKind::Cccs {
                         nodes: [p, n],
                         sense: Sense(part),
-                        gain: value,
+                        gain: value * m,
                     }
                 } else {
                     PartKind::Ccvs {
                         nodes: [p, n],
                         sense: Sense(part),
-                        ohm: value / m,
+                        ohm: value,
                     }
                 };
                 self.add(work, instance, card_ref, card, None, kind, gain.range);

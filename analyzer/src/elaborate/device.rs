@@ -47,19 +47,45 @@ pub(super) fn stand_in(
     }
     let bipolar = ["rpi", "cpi", "cmu", "ro", "rb", "re", "rc"];
     let has_bipolar = bipolar.iter().any(|key| mark.value(key).is_some());
-    let pins_bipolar = mark.pins.as_ref().is_some_and(|pins| {
-        pins.iter()
-            .any(|pin| pin == "c" || pin == "b" || pin == "e")
-    });
-    let family = if has_bipolar || pins_bipolar {
+    // `b` alone is no sign: it may be a bulk.
+    let pin = |letters: [&str; 2]| {
+        let has = |pin: &String| letters.contains(&pin.as_str());
+        mark.pins.as_ref().is_some_and(|pins| pins.iter().any(has))
+    };
+    let family = if pin(["c", "e"]) || (has_bipolar && !pin(["d", "g"])) {
         Family::Bipolar
     } else {
         Family::FieldEffect
     };
+    check_keys(mark, family)?;
     let builder = Builder { mark, inner };
     match family {
         Family::Bipolar => builder.bipolar(nodes),
         Family::FieldEffect => builder.field_effect(nodes),
+    }
+}
+
+/// Keys of the other family have no place in the equivalent: they are no small slip.
+fn check_keys(mark: &DeviceMark, family: Family) -> Result<(), Fault> {
+    let (own, name): (&[&str], &str) = match family {
+        Family::FieldEffect => (
+            &[
+                "gm", "tau", "gds", "cgs", "cgd", "cds", "ri", "rg", "rd", "rs",
+            ],
+            "field-effect transistor (pins d, g, s)",
+        ),
+        Family::Bipolar => (
+            &["gm", "tau", "rpi", "cpi", "cmu", "ro", "rb", "re", "rc"],
+            "bipolar transistor (pins c, b, e)",
+        ),
+    };
+    match mark
+        .values
+        .iter()
+        .find(|(key, _, _)| !own.contains(&key.as_str()))
+    {
+        Some((key, _, _)) => Err(format!("`{key}=` has no place in a {name}")),
+        None => Ok(()),
     }
 }
 

@@ -292,8 +292,19 @@ impl<'p> Flattener<'p> {
                 *flag = true;
             }
             let mark = instance.marks[index].1.clone();
-            self.stand_in(work, instance, card_ref, card, nodes, &mark);
-            return None;
+            if is_device(&card.kind) {
+                self.stand_in(work, instance, card_ref, card, nodes, &mark);
+                return None;
+            }
+            let message = format!(
+                "`{name}` is neither a semiconductor device nor a subcircuit instance; nothing stands in for it"
+            );
+            let kind = IssueKind::BadMark {
+                message,
+                nearest: None,
+            };
+            let place = Span::new(card_ref.file, card.name.range);
+            work.issue(kind, mark.target.span, Some(place));
         }
         match &card.kind {
             CardKind::Instance { subcircuit, .. } => {
@@ -495,6 +506,14 @@ fn handed_down(outer: &Instance, name: &str, used: &mut [bool]) -> Vec<(String, 
 }
 
 /// A device part in `m` parallel copies.
+/// Whether a `device` mark may stand in for a card.
+fn is_device(kind: &CardKind) -> bool {
+    matches!(
+        kind,
+        CardKind::Device { .. } | CardKind::Instance { .. } | CardKind::NotComputed { .. }
+    )
+}
+
 pub(super) fn scaled(kind: PartKind, m: f64) -> PartKind {
     match kind {
         PartKind::Resistor { nodes, ohm } => PartKind::Resistor {

@@ -244,17 +244,17 @@ pub(super) fn read_mark(
     reader.read()
 }
 
-struct MarkReader<'a> {
+pub(super) struct MarkReader<'a> {
     program: &'a Program,
     card: CardRef,
-    mark: &'a Mark,
+    pub(super) mark: &'a Mark,
     extent: TextRange,
     env: &'a Rc<Env>,
     issues: &'a mut Vec<Issue>,
 }
 
 impl MarkReader<'_> {
-    fn text(&self, range: TextRange) -> String {
+    pub(super) fn text(&self, range: TextRange) -> String {
         self.program.text(self.card.file, range).to_owned()
     }
 
@@ -269,7 +269,7 @@ impl MarkReader<'_> {
         }
     }
 
-    fn bad(&mut self, range: TextRange, message: String, nearest: Option<&str>) {
+    pub(super) fn bad(&mut self, range: TextRange, message: String, nearest: Option<&str>) {
         let kind = IssueKind::BadMark {
             message,
             nearest: nearest.map(str::to_owned),
@@ -299,6 +299,9 @@ impl MarkReader<'_> {
         if let Some(keys) = keys {
             self.check_keys(&word, keys);
         }
+        self.check_repeats();
+        self.check_words(&word);
+        self.check_recorded(&word);
         let data = match word.as_str() {
             "block" => MarkData::Block(self.block()?),
             "rail" => MarkData::Rail(self.rail()?),
@@ -345,7 +348,7 @@ impl MarkReader<'_> {
         }
     }
 
-    fn param(&self, key: &str) -> Option<Param> {
+    pub(super) fn param(&self, key: &str) -> Option<Param> {
         self.mark
             .params
             .iter()
@@ -388,6 +391,18 @@ impl MarkReader<'_> {
             .param(key)
             .map_or(self.mark.word.range, |p| p.value.range);
         self.bad(range, format!("`{key}=` must be above zero"), None);
+        None
+    }
+
+    fn not_negative(&mut self, key: &str) -> Option<f64> {
+        let value = self.number(key)?;
+        if value >= 0.0 {
+            return Some(value);
+        }
+        let range = self
+            .param(key)
+            .map_or(self.mark.word.range, |p| p.value.range);
+        self.bad(range, format!("`{key}=` must not be negative"), None);
         None
     }
 
@@ -482,12 +497,12 @@ impl MarkReader<'_> {
     fn rail(&mut self) -> Option<RailMark> {
         let node = self.first_name()?;
         let _ = self.number("volts");
-        let ohm = self.number("ohms");
-        let henry = self.number("henries");
+        let ohm = self.not_negative("ohms");
+        let henry = self.not_negative("henries");
         Some(RailMark {
             node,
-            ohm: ohm.unwrap_or(0.0).max(0.0),
-            henry: henry.unwrap_or(0.0).max(0.0),
+            ohm: ohm.unwrap_or(0.0),
+            henry: henry.unwrap_or(0.0),
             has_impedance: ohm.is_some_and(|v| v > 0.0) || henry.is_some_and(|v| v > 0.0),
         })
     }

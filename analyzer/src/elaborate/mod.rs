@@ -6,6 +6,7 @@ mod cards;
 mod device;
 mod flatten;
 mod issue;
+mod mark_checks;
 mod marks;
 mod names;
 mod params;

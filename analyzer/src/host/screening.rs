@@ -7,7 +7,7 @@ use super::report::{
 };
 use crate::assembly::Unknowns;
 use crate::cancel::{Cancel, Cancelled};
-use crate::circuit::{NodeRef, PartKind};
+use crate::circuit::{NodeId, NodeRef, PartKind};
 use crate::elaborate::BlockCircuit;
 use crate::finding::Finding;
 use crate::rules::{BlockContext, screen_findings};
@@ -133,13 +133,17 @@ fn why(block: &BlockCircuit, screen: Option<&Screen>, verdict: Verdict) -> Optio
 /// What is and is not said about other terminations.
 fn port_note(screen: &Screen) -> Option<String> {
     let two_port = screen.two_port.as_ref()?;
-    Some(if two_port.mu_min > 1.0 {
+    // Nearer to 1 than this is 1: what a lossless or passive network shows.
+    const ONE: f64 = 1e-9;
+    let at = crate::units::hertz(two_port.mu_min_hz);
+    Some(if two_port.mu_min > 1.0 + ONE {
         "mu above 1 at every swept point, not certified between them".to_owned()
+    } else if !two_port.below_one {
+        format!("stable as terminated; mu comes down to 1 at {at}")
     } else {
         format!(
-            "stable as terminated; mu falls to {:.3} at {}, so some passive terminations make it oscillate",
+            "stable as terminated; mu falls to {:.6} at {at}, so some passive terminations make it oscillate",
             two_port.mu_min,
-            crate::units::hertz(two_port.mu_min_hz)
         )
     })
 }
@@ -153,6 +157,17 @@ fn doubt_in_words(block: &BlockCircuit, doubt: &Doubt) -> String {
         Doubt::NotCounted(failure) => failure.reason.clone(),
         Doubt::Disagree(text) => text.clone(),
         Doubt::Singular { nodes, parts } => {
+            let mut nodes: Vec<NodeId> = nodes.clone();
+            if nodes.is_empty() {
+                // Currents alone: the nodes are those between which they flow.
+                let ends = parts.iter().filter_map(|part| block.circuit.part(*part));
+                nodes.extend(
+                    ends.flat_map(|part| part.kind.terminals())
+                        .filter_map(|n| n.node()),
+                );
+                nodes.sort_unstable();
+                nodes.dedup();
+            }
             let mut names: Vec<String> = nodes
                 .iter()
                 .map(|node| format!("node `{}`", block.circuit.node_name(NodeRef::Node(*node))))

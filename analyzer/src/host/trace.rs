@@ -5,8 +5,8 @@ use super::screening::request;
 use crate::circuit::{NodeRef, PartKind};
 use crate::elaborate::BlockCircuit;
 use crate::stability::{
-    Probe, Solver, SolverFailure, active_sources, driving_point_admittance, factors, natural_modes,
-    normalized_determinant, scattering, solver_of,
+    ModeFailure, Probe, Solver, SolverFailure, active_sources, driving_point_admittance,
+    driving_point_impedance, factors, natural_modes, normalized_determinant, scattering, solver_of,
 };
 use num_complex::Complex64;
 
@@ -131,8 +131,18 @@ impl Prepared {
 
     fn modes_table(&self, solver: &Solver) -> Result<TraceTable, TraceError> {
         let limit = self.host.config.limits.states;
-        let modes = natural_modes(solver, false, limit, None, &|| false)
-            .map_err(|failure| TraceError::NoSystem(format!("modes are not known: {failure:?}")))?;
+        if solver.system.has_delays() {
+            let text = "the block has delays, so its modes are infinitely many; squeg lint lists those found in the sweep";
+            return Err(TraceError::NoSystem(text.to_owned()));
+        }
+        let modes = natural_modes(solver, false, limit, None, &|| false).map_err(|failure| {
+            TraceError::NoSystem(match failure {
+                ModeFailure::TooMany { states } => {
+                    format!("the block has {states} states, and modes are computed up to {limit}")
+                }
+                ModeFailure::Numeric(error) => format!("the modes are not known: {error}"),
+            })
+        })?;
         let mut rows: Vec<Vec<f64>> = modes
             .list
             .iter()
@@ -175,12 +185,13 @@ fn add_columns(
                 let text = format!("no node `{name}` in block `{}`", block.name);
                 return Err(TraceError::Unknown(text));
             };
-            let mut values =
-                driving_point_admittance(solver, Probe::Node(node), hz).map_err(numeric)?;
-            if word == "z" {
-                values = values.into_iter().map(|y| y.inv()).collect();
-            }
-            complex_columns(table, quantity, &values);
+            let probe = Probe::Node(node);
+            let values = if word == "z" {
+                driving_point_impedance(solver, probe, hz)
+            } else {
+                driving_point_admittance(solver, probe, hz)
+            };
+            complex_columns(table, quantity, &values.map_err(numeric)?);
         }
         ("s" | "k" | "mu" | "mu-prime" | "delta", None) => {
             port_columns(table, block, solver, &word, quantity, hz)?;
@@ -223,7 +234,7 @@ fn port_columns(
     if word == "s" {
         for i in 0..ports {
             for j in 0..ports {
-                let values: Vec<Complex64> = matrices.iter().map(|s| s[(i, j)]).collect();
+                let values: Vec<Complex64> = matrices.iter().map(|m| m.s[(i, j)]).collect();
                 complex_columns(table, &format!("s{}{}", i + 1, j + 1), &values);
             }
         }
@@ -232,20 +243,20 @@ fn port_columns(
     if word == "delta" {
         let values: Vec<Complex64> = matrices
             .iter()
-            .map(|s| s[(0, 0)] * s[(1, 1)] - s[(0, 1)] * s[(1, 0)])
+            .map(|m| m.s[(0, 0)] * m.s[(1, 1)] - m.s[(0, 1)] * m.s[(1, 0)])
             .collect();
         complex_columns(table, quantity, &values);
         return Ok(());
     }
     table.header.push(quantity.to_owned());
-    for (row, s) in table.rows.iter_mut().zip(&matrices) {
+    for (row, scattering) in table.rows.iter_mut().zip(matrices) {
         // mu' is mu with the ports exchanged.
-        let mut s = s.clone();
+        let mut scattering = scattering;
         if word == "mu-prime" {
-            s.swap_rows(0, 1);
-            s.swap_columns(0, 1);
+            scattering.s.swap_rows(0, 1);
+            scattering.s.swap_columns(0, 1);
         }
-        let found = factors(&s);
+        let found = factors(&scattering);
         row.push(if word == "k" { found.k } else { found.mu });
     }
     Ok(())

@@ -2,11 +2,13 @@
 //!
 //! Newton's method with D = d ln det A / ds: s <- s - 1/(D - sum over the known roots 1/(s - s_j)),
 //! the known ones deflated as in Ehrlich (Comm. ACM 1967) and Aberth (Math. Comp. 1973; both from
-//! memory).
+//! memory). Far from a root the many others rule D; they nearly cancel in D less that of a second
+//! determinant which has them too, so that the ratio of the two is followed until the steps are short.
 
 use super::error::NumericError;
 use super::plan::Plan;
 use super::values::Values;
+use super::workspace::Workspace;
 use num_complex::Complex64;
 
 /// Steps at the most.
@@ -15,6 +17,8 @@ const STEPS: usize = 40;
 const SETTLED: f64 = 1e-11;
 /// Largest step over |s|.
 const LONGEST: f64 = 0.5;
+/// A step of the ratio below this (over |s|) is followed by steps of the determinant itself.
+const NEAR: f64 = 1e-5;
 /// Roots nearer than this (over |s|) are one.
 const SAME: f64 = 1e-7;
 
@@ -23,17 +27,21 @@ const SAME: f64 = 1e-7;
 struct Walk {
     s: Complex64,
     open: bool,
+    near: bool,
     settled: bool,
 }
 
 /// Roots with im >= 0 reached from `seeds`, each once and none of `known` (conjugates are implied).
-/// Seeds that do not settle are left out, so that nothing is said about roots that were not found.
+/// `other` is a determinant with most of the same roots, none of them sought, for seeds far from any
+/// root. Seeds that do not settle are left out, so that nothing is said about roots that were not
+/// found.
 ///
 /// # Errors
 /// [`NumericError::Stopped`], and what factorisation reports; a root hit exactly is no error.
 pub fn roots_near(
     plan: &Plan,
     values: &Values,
+    other: Option<&Values>,
     seeds: &[Complex64],
     known: &[Complex64],
     stop: &dyn Fn() -> bool,
@@ -43,6 +51,7 @@ pub fn roots_near(
         .map(|s| Walk {
             s: *s,
             open: s.norm() > 0.0,
+            near: other.is_none(),
             settled: false,
         })
         .collect();
@@ -57,8 +66,17 @@ pub fn roots_near(
                 return Err(NumericError::Stopped);
             }
             let points: Vec<Complex64> = batch.iter().map(|walk| walk.s).collect();
-            match plan.factor_rough(values, &points, &mut ws) {
-                Ok(()) => {}
+            let derivatives = derivatives(plan, values, &points, &mut ws).and_then(|of_values| {
+                let of_other = match other {
+                    Some(other) if batch.iter().any(|walk| !walk.near) => {
+                        derivatives(plan, other, &points, &mut ws)?
+                    }
+                    _ => vec![Complex64::default(); points.len()],
+                };
+                Ok((of_values, of_other))
+            });
+            let (own, others) = match derivatives {
+                Ok(derivatives) => derivatives,
                 Err(NumericError::SingularPoint { .. } | NumericError::Unsound { .. }) => {
                     // One of them is a root to the last bit, or out of range: look beside it.
                     for walk in batch.iter_mut() {
@@ -68,10 +86,10 @@ pub fn roots_near(
                     continue;
                 }
                 Err(other) => return Err(other),
-            }
-            plan.invert_selected(&mut ws)?;
-            for (lane, walk) in batch.iter_mut().enumerate() {
-                advance(walk, ws.log_derivative(lane), known);
+            };
+            for (walk, (own, other)) in batch.iter_mut().zip(own.into_iter().zip(others)) {
+                let derivative = if walk.near { own } else { own - other };
+                advance(walk, derivative, known);
             }
         }
     }
@@ -84,6 +102,19 @@ pub fn roots_near(
         }
     }
     Ok(found)
+}
+
+fn derivatives(
+    plan: &Plan,
+    values: &Values,
+    points: &[Complex64],
+    ws: &mut Workspace,
+) -> Result<Vec<Complex64>, NumericError> {
+    plan.factor_rough(values, points, ws)?;
+    plan.invert_selected(ws)?;
+    Ok((0..points.len())
+        .map(|lane| ws.log_derivative(lane))
+        .collect())
 }
 
 fn advance(walk: &mut Walk, derivative: Complex64, known: &[Complex64]) {
@@ -105,7 +136,9 @@ fn advance(walk: &mut Walk, derivative: Complex64, known: &[Complex64]) {
         step *= LONGEST / size;
     }
     walk.s -= step;
-    if size <= SETTLED {
+    if !walk.near {
+        walk.near = size <= NEAR;
+    } else if size <= SETTLED {
         walk.open = false;
         walk.settled = true;
         // A real root is real to rounding.

@@ -70,6 +70,31 @@ pub(super) fn judge(
     })
 }
 
+/// Growing modes of a system without delays whose modes are too many to be computed: those that are
+/// found within a band (hertz) until `counted` are.
+///
+/// # Errors
+/// [`NumericError::Stopped`], and what factorisation reports.
+pub(super) fn growing_modes(
+    solver: &Solver,
+    band_hz: [f64; 2],
+    counted: usize,
+    stop: &dyn Fn() -> bool,
+) -> Result<Modes, NumericError> {
+    let [low, high] = band_hz.map(normalised_rad);
+    let count = BandCount {
+        turns: counted as f64,
+        low,
+        high,
+        settled: true,
+        evaluations: 0,
+        near: Vec::new(),
+    };
+    let mut modes = listed(search(solver, &count, stop)?);
+    modes.list.retain(|mode| mode.damping() < -AXIS_TOLERANCE);
+    Ok(modes)
+}
+
 /// The count as a determinant's, when it can be one.
 fn verdict_on(
     left_on: Option<&str>,
@@ -162,7 +187,7 @@ fn search(
         near.extend(inside(count, share, 12.0));
     }
     let (plan, on) = (&solver.plan, &solver.on);
-    let mut roots = roots_near(plan, on, &near, &[], stop)?;
+    let mut roots = roots_near(plan, on, None, &near, &[], stop)?;
     let growing = |roots: &[Complex64]| -> usize {
         let right = roots.iter().filter(|s| damping(s) < -AXIS_TOLERANCE);
         right.map(|s| if s.im > 0.0 { 2 } else { 1 }).sum()
@@ -171,8 +196,11 @@ fn search(
         if growing(&roots) as f64 >= count.turns.round() {
             break;
         }
-        let more = roots_near(plan, on, &inside(count, share, 10.0), &roots, stop)?;
-        roots.extend(more);
+        for other in [None, Some(&solver.off)] {
+            let seeds = inside(count, share, 10.0);
+            let more = roots_near(plan, on, other, &seeds, &roots, stop)?;
+            roots.extend(more);
+        }
     }
     roots.retain(|s| damping(s) < LISTED_DAMPING && s.norm() <= count.high);
     Ok(roots)

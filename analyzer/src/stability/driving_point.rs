@@ -38,7 +38,20 @@ pub struct Crossing {
     pub siemens: f64,
 }
 
-/// Driving-point admittance of a probe at given frequencies, siemens.
+/// Driving-point impedance of a probe at given frequencies, ohms.
+///
+/// # Errors
+/// What factorisation reports.
+pub fn driving_point_impedance(
+    solver: &Solver,
+    probe: Probe,
+    hz: &[f64],
+) -> Result<Vec<Complex64>, NumericError> {
+    let mut all = Evaluator::new(solver, &[probe]).sweep(hz)?;
+    Ok(all.pop().unwrap_or_default())
+}
+
+/// Driving-point admittance of a probe at given frequencies, siemens; infinite at an ideal short.
 ///
 /// # Errors
 /// What factorisation reports.
@@ -47,9 +60,15 @@ pub fn driving_point_admittance(
     probe: Probe,
     hz: &[f64],
 ) -> Result<Vec<Complex64>, NumericError> {
-    let mut evaluator = Evaluator::new(solver, &[probe]);
-    let z = evaluator.sweep(hz)?;
-    Ok(z[0].iter().map(|z| z.inv()).collect())
+    let z = driving_point_impedance(solver, probe, hz)?;
+    let admittance = |z: Complex64| {
+        if z == Complex64::default() {
+            Complex64::new(f64::INFINITY, 0.0)
+        } else {
+            z.inv()
+        }
+    };
+    Ok(z.into_iter().map(admittance).collect())
 }
 
 /// Ranges of negative conductance of one probe over a rising grid, hertz.

@@ -17,8 +17,8 @@ mod verdict;
 pub use active::{ActiveSet, active_sources, is_passive_set};
 pub use determinant::{Determinant, DeterminantFailure, count, normalized_determinant};
 pub use driving_point::{
-    Crossing, DrivingPoint, conductance_ranges, driving_point_admittance, driving_points,
-    startup_crossings,
+    Crossing, DrivingPoint, conductance_ranges, driving_point_admittance, driving_point_impedance,
+    driving_points, startup_crossings,
 };
 pub use impedance::Probe;
 pub use modes::{
@@ -29,5 +29,5 @@ pub use probe::{Solver, SolverFailure};
 pub use screen::{
     Doubt, Earlier, ListedMode, Screen, ScreenRequest, screen, screen_from, solver_of,
 };
-pub use two_port::{Factors, TwoPort, TwoPortWatch, factors, scattering};
+pub use two_port::{Factors, Scattering, TwoPort, TwoPortWatch, factors, scattering};
 pub use verdict::{Sight, Verdict};

@@ -289,7 +289,18 @@ impl Work<'_> {
         } else {
             self.count_lumped()?
         };
-        let listed = match &modes {
+        let found = match (&modes, &counted) {
+            (None, Ok(determinant)) if determinant.on_roots > 0 => {
+                let band_hz = self
+                    .request
+                    .sweep_hz
+                    .unwrap_or(self.request.default_sweep_hz);
+                delayed::growing_modes(self.solver, band_hz, determinant.on_roots, &stop).ok()
+            }
+            _ => None,
+        };
+        self.cancel.check()?;
+        let listed = match modes.as_ref().or(found.as_ref()) {
             Some(modes) => self.list(modes, off.as_ref(), &active),
             None => Ok(Vec::new()),
         };

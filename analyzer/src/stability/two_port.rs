@@ -20,6 +20,8 @@ pub struct TwoPort {
     pub mu_min: f64,
     /// Where, hertz.
     pub mu_min_hz: f64,
+    /// Whether mu falls below 1 by more than rounding somewhere.
+    pub below_one: bool,
     /// Least finite K.
     pub k_min: Option<f64>,
     /// Where, hertz.
@@ -28,24 +30,58 @@ pub struct TwoPort {
     pub unilateral: bool,
 }
 
+/// A scattering matrix, rows and columns in port order.
+#[derive(Clone, PartialEq, Debug)]
+pub struct Scattering {
+    /// The matrix.
+    pub s: DMatrix<Complex64>,
+    /// Bound of the rounding error of its entries.
+    pub error: f64,
+}
+
 /// K and mu of one S matrix.
 #[derive(Clone, Copy, PartialEq, Debug)]
 pub struct Factors {
-    /// Rollett's K; infinite without transmission in one direction.
+    /// Rollett's K; infinite without transmission in one direction, NaN where its digits are lost.
     pub k: f64,
-    /// mu (load side).
+    /// mu (load side); NaN where its digits are lost.
     pub mu: f64,
+    /// Bound of the rounding error of mu.
+    pub mu_error: f64,
 }
 
-/// K and mu from a 2x2 scattering matrix.
-pub fn factors(s: &DMatrix<Complex64>) -> Factors {
+/// K and mu from a 2x2 scattering matrix. Where both ports reflect nearly everything, or nearly
+/// nothing comes back, the differences that they are made of drown in rounding: a figure without two
+/// sure digits is NaN.
+pub fn factors(scattering: &Scattering) -> Factors {
+    const SURE: f64 = 100.0;
+    let (s, error) = (&scattering.s, scattering.error);
     let (s11, s12, s21, s22) = (s[(0, 0)], s[(0, 1)], s[(1, 0)], s[(1, 1)]);
     let delta = s11 * s22 - s12 * s21;
     let loop_size = (s12 * s21).norm();
+    let size = 1.0 + [s11, s12, s21, s22].iter().map(|s| s.norm()).sum::<f64>();
+    // A relative error of the figure: that of the numerator and that of the denominator.
+    let sure = |numerator: f64, denominator: f64, degree: i32| {
+        let lost = SURE * error * size.powi(degree);
+        numerator.abs() > lost && (denominator > lost || denominator == 0.0)
+    };
+    let figure = |numerator: f64, denominator: f64, degree: i32| {
+        if sure(numerator, denominator, degree) {
+            numerator / denominator
+        } else {
+            f64::NAN
+        }
+    };
     let numerator = 1.0 - s11.norm_sqr() - s22.norm_sqr() + delta.norm_sqr();
-    let k = numerator / (2.0 * loop_size);
-    let mu = (1.0 - s11.norm_sqr()) / ((s22 - delta * s11.conj()).norm() + loop_size);
-    Factors { k, mu }
+    let above = 1.0 - s11.norm_sqr();
+    let denominator = (s22 - delta * s11.conj()).norm() + loop_size;
+    let mu = figure(above, denominator, 2);
+    let lost = 4.0 * error * size.powi(2);
+    Factors {
+        k: figure(numerator, 2.0 * loop_size, 3),
+        mu,
+        mu_error: mu.abs() * lost * (1.0 / above.abs() + 1.0 / denominator),
+    }
 }
 
 /// Unknown-side reading of a port: what `b` is made of.
@@ -156,8 +192,8 @@ impl Waves {
         Some(Self { readings, terms })
     }
 
-    /// The matrices of one batch of points, rows and columns in port order.
-    fn read(&self, ws: &Workspace, points: usize) -> Vec<DMatrix<Complex64>> {
+    /// The matrices of one batch of points.
+    fn read(&self, ws: &Workspace, points: usize) -> Vec<Scattering> {
         let ports = self.readings.len();
         let mut matrices = vec![DMatrix::zeros(ports, ports); points];
         let mut lanes = vec![Complex64::default(); points];
@@ -173,12 +209,19 @@ impl Waves {
                 matrix[(i, j)] = self.readings[i].wave(matrix[(i, j)], i == j);
             }
         }
+        let rounding = |lane: usize| 4.0 * f64::EPSILON * ws.growth(lane).max(1.0);
         matrices
+            .into_iter()
+            .enumerate()
+            .map(|(lane, s)| Scattering {
+                s,
+                error: rounding(lane),
+            })
+            .collect()
     }
 }
 
-/// The scattering matrix at each frequency; rows and columns in port order. `None` when a port
-/// cannot be read.
+/// The scattering matrix at each frequency. `None` when a port cannot be read.
 ///
 /// # Errors
 /// What factorisation reports.
@@ -186,7 +229,7 @@ pub fn scattering(
     solver: &Solver,
     circuit: &Circuit,
     hz: &[f64],
-) -> Result<Option<Vec<DMatrix<Complex64>>>, NumericError> {
+) -> Result<Option<Vec<Scattering>>, NumericError> {
     let Some(waves) = Waves::new(solver, circuit) else {
         return Ok(None);
     };
@@ -209,6 +252,7 @@ pub fn scattering(
 pub struct TwoPortWatch {
     waves: Option<Waves>,
     mu_min: (f64, f64),
+    below_one: bool,
     k_min: Option<(f64, f64)>,
     transmits: bool,
 }
@@ -220,6 +264,7 @@ impl TwoPortWatch {
         Self {
             waves: two.then(|| Waves::new(solver, circuit)).flatten(),
             mu_min: (f64::INFINITY, 0.0),
+            below_one: false,
             k_min: None,
             transmits: false,
         }
@@ -230,16 +275,16 @@ impl TwoPortWatch {
         let Some(waves) = &self.waves else {
             return;
         };
-        for (hz, matrix) in hz.iter().zip(waves.read(ws, hz.len())) {
-            let found = factors(&matrix);
+        for (hz, scattering) in hz.iter().zip(waves.read(ws, hz.len())) {
+            let found = factors(&scattering);
             if found.mu < self.mu_min.0 {
                 self.mu_min = (found.mu, *hz);
             }
-            if found.k.is_finite() {
-                self.transmits = true;
-                if self.k_min.is_none_or(|(k, _)| found.k < k) {
-                    self.k_min = Some((found.k, *hz));
-                }
+            self.below_one |= found.mu + found.mu_error < 1.0;
+            let s = &scattering.s;
+            self.transmits |= (s[(0, 1)] * s[(1, 0)]).norm() > 0.0;
+            if found.k.is_finite() && self.k_min.is_none_or(|(k, _)| found.k < k) {
+                self.k_min = Some((found.k, *hz));
             }
         }
     }
@@ -249,6 +294,7 @@ impl TwoPortWatch {
         self.mu_min.0.is_finite().then(|| TwoPort {
             mu_min: self.mu_min.0,
             mu_min_hz: self.mu_min.1,
+            below_one: self.below_one,
             k_min: self.k_min.map(|(k, _)| k),
             k_min_hz: self.k_min.map(|(_, hz)| hz),
             unilateral: !self.transmits,

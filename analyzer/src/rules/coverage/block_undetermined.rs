@@ -2,7 +2,7 @@
 
 use crate::finding::{Finding, RuleId, Severity};
 use crate::rules::{BlockContext, Family, Rule};
-use crate::stability::Verdict;
+use crate::stability::{Doubt, Verdict};
 
 /// The rule.
 pub static RULE: Rule = Rule {
@@ -35,8 +35,14 @@ Findings that were made all the same stay; a mode that is seen to grow makes the
 The message names the way out, such as a stand-in by `*~ device`.
 ";
 
+/// A contradiction between the methods is `methods-disagree`, when nothing else is wrong.
+fn is_told_otherwise(context: &BlockContext<'_>) -> bool {
+    let doubt = context.screen.and_then(|screen| screen.doubt.as_ref());
+    matches!(doubt, Some(Doubt::Disagree(_))) && context.block.gaps.is_empty()
+}
+
 fn check(context: &BlockContext<'_>, out: &mut Vec<Finding>) {
-    if context.verdict != Verdict::Undetermined {
+    if context.verdict != Verdict::Undetermined || is_told_otherwise(context) {
         return;
     }
     let why = context.why.unwrap_or("no reason is known");

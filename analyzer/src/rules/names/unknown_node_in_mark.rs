@@ -50,6 +50,14 @@ fn check(context: &TextContext<'_>, out: &mut Vec<Finding>) {
             continue;
         };
         let near = did_you_mean(nearest);
+        let here = nearest
+            .as_ref()
+            .is_some_and(|near| near.eq_ignore_ascii_case(name));
+        if here {
+            let message = format!("`{name}` is there, but it is not what this mark can take");
+            out.push(RULE.finding(issue.span, message));
+            continue;
+        }
         let message = format!("no node or part `{name}` where this mark looks for it{near}");
         let mut finding = RULE.finding(issue.span, message);
         if let Some(nearest) = nearest {

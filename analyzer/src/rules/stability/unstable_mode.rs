@@ -3,7 +3,7 @@
 use crate::circuit::{PartId, PartKind};
 use crate::finding::{Finding, RuleId, Severity};
 use crate::rules::{BlockContext, Family, Rule};
-use crate::stability::{DrivingPoint, ListedMode};
+use crate::stability::{DrivingPoint, ListedMode, Screen, Verdict};
 use crate::text::Span;
 use crate::units::{hertz, hertz_range, seconds};
 
@@ -51,6 +51,14 @@ const ALIKE: f64 = 1e-3;
 
 fn check(context: &BlockContext<'_>, out: &mut Vec<Finding>) {
     let Some(screen) = context.screen else { return };
+    // One count alone is no verdict: `methods-disagree` says so.
+    if context.verdict != Verdict::Unstable {
+        return;
+    }
+    if screen.growing().next().is_none() {
+        out.push(counted_only(context, screen));
+        return;
+    }
     let mut told: Vec<(Span, &ListedMode, usize)> = Vec::new();
     // A delay loop has modes without end, all of one cause.
     let delayed = screen.delays_followed_hz.is_some();
@@ -71,6 +79,17 @@ fn check(context: &BlockContext<'_>, out: &mut Vec<Finding>) {
     for (span, listed, count) in told {
         out.push(finding(context, span, listed, count));
     }
+}
+
+/// Modes that the phase of the determinant counts and nothing has found.
+fn counted_only(context: &BlockContext<'_>, screen: &Screen) -> Finding {
+    let count = screen.unstable_modes().unwrap_or(0);
+    let message = format!(
+        "{count} natural modes grow, counted by the phase of the determinant; where they are was not found"
+    );
+    let mut found = context.finding(&RULE, context.block.span, message);
+    found.values = vec![("modes", count as f64)];
+    found
 }
 
 /// The active part with the largest share; of equal ones the first in the circuit.

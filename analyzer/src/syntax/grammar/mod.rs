@@ -58,7 +58,7 @@ pub fn parse(text: Arc<str>, role: FileRole) -> Parse {
             kind,
         });
     }
-    errors.extend(pairing_errors(&tree, &statements));
+    errors.extend(pairing_errors(&tree, &mut statements));
     let title_card = card_in_title(&tree, &statements);
     errors.sort_by_key(|error| (error.range.start, error.range.end));
     Parse {
@@ -151,18 +151,20 @@ fn card_in_title(tree: &Tree, statements: &[Statement]) -> Option<TextRange> {
     (sound && connected).then_some(title)
 }
 
-/// `.subckt` and `.ends`, `.lib` and `.endl` must pair.
-fn pairing_errors(tree: &Tree, statements: &[Statement]) -> Vec<SyntaxError> {
+/// `.subckt` and `.ends`, `.lib` and `.endl` must pair. A `.subckt` line that nothing closes is
+/// taken out of the statements: the cards after it stay where they would be without it.
+fn pairing_errors(tree: &Tree, statements: &mut Vec<Statement>) -> Vec<SyntaxError> {
     let mut errors = Vec::new();
     let mut open: Vec<Word> = Vec::new();
+    let mut unclosed: Vec<Word> = Vec::new();
     let mut section: Option<TextRange> = None;
-    for statement in statements {
+    for statement in statements.iter() {
         let StatementKind::Dot(dot) = &statement.kind else {
             continue;
         };
         match dot.as_ref() {
             Dot::Subckt { name, .. } => open.push(*name),
-            Dot::Ends { name } => match open.pop() {
+            Dot::Ends { name } => match close(tree, &mut open, &mut unclosed, *name) {
                 None => errors.push(fault(SyntaxErrorKind::StrayEnds, statement.range)),
                 Some(opened) => errors.extend(ends_mismatch(tree, opened, *name)),
             },
@@ -173,7 +175,14 @@ fn pairing_errors(tree: &Tree, statements: &[Statement]) -> Vec<SyntaxError> {
             _ => {}
         }
     }
-    for name in open {
+    unclosed.extend(open);
+    statements.retain(|statement| match &statement.kind {
+        StatementKind::Dot(dot) => {
+            !matches!(dot.as_ref(), Dot::Subckt { name, .. } if unclosed.contains(name))
+        }
+        _ => true,
+    });
+    for name in unclosed {
         let kind = SyntaxErrorKind::UnclosedSubcircuit(tree.slice(name.range).to_owned());
         errors.push(fault(kind, name.range));
     }
@@ -181,6 +190,25 @@ fn pairing_errors(tree: &Tree, statements: &[Statement]) -> Vec<SyntaxError> {
         errors.push(fault(SyntaxErrorKind::UnpairedSection, range));
     }
     errors
+}
+
+/// The subcircuit that an `.ends` line closes: by its name where one of that name is open, so that
+/// those opened after it are the ones left unclosed; otherwise the innermost.
+fn close(
+    tree: &Tree,
+    open: &mut Vec<Word>,
+    unclosed: &mut Vec<Word>,
+    name: Option<Word>,
+) -> Option<Word> {
+    let named = name.and_then(|name| {
+        let wanted = tree.slice(name.range);
+        open.iter()
+            .rposition(|word| tree.slice(word.range).eq_ignore_ascii_case(wanted))
+    });
+    if let Some(at) = named {
+        unclosed.extend(open.drain(at + 1..));
+    }
+    open.pop()
 }
 
 fn ends_mismatch(tree: &Tree, open: Word, name: Option<Word>) -> Option<SyntaxError> {
