@@ -29,6 +29,8 @@ const CLUSTER: f64 = 1e-6;
 const LARGEST_STEP: f64 = 1e-3;
 /// A last step below this (over |s|) counts as settled.
 const SETTLED: f64 = 1e-11;
+/// Damping below which a mode gets a last step by sound factors.
+const RESONANT: f64 = 0.5;
 /// Steps at the most.
 const STEPS: usize = 6;
 
@@ -79,6 +81,30 @@ pub fn polish(
                 if let Some(other) = partner[k] {
                     current[other] = out[i].s.conj();
                 }
+            }
+        }
+    }
+    let resonant: Vec<usize> = (0..out.len())
+        .filter(|&i| out[i].converged && out[i].cluster == 1)
+        .filter(|&i| out[i].s.re.abs() < RESONANT * out[i].s.norm())
+        .collect();
+    for batch in resonant.chunks(plan.lanes()) {
+        if stop() {
+            break;
+        }
+        let points: Vec<Complex64> = batch.iter().map(|&i| out[i].s).collect();
+        for (&i, derivative) in batch
+            .iter()
+            .zip(sound_derivatives(plan, values, &points, &mut ws))
+        {
+            let mut last = Polished {
+                last_step: f64::INFINITY,
+                ..out[i]
+            };
+            step(&mut last, derivative, &current, upper[i], at_zero);
+            // A long step here would be a fault of the point, not of the mode.
+            if last.converged || last.last_step < 1e-6 {
+                out[i].s = last.s;
             }
         }
     }
@@ -136,6 +162,30 @@ fn derivatives(
             Ok(found)
         }
         Err(other) => Err(other),
+    }
+}
+
+/// D at each point by lanes that are sound, so that the root is that of the matrix and not of its
+/// rounded factors; `None` where there is no such lane.
+fn sound_derivatives(
+    plan: &Plan,
+    values: &Values,
+    points: &[Complex64],
+    ws: &mut Workspace,
+) -> Vec<Option<Complex64>> {
+    let mut at = |points: &[Complex64]| -> Option<Vec<Complex64>> {
+        plan.factor_sound(values, points, ws).ok()?;
+        plan.invert_selected(ws).ok()?;
+        Some(
+            (0..points.len())
+                .map(|lane| ws.log_derivative(lane))
+                .collect(),
+        )
+    };
+    match at(points) {
+        Some(all) => all.into_iter().map(Some).collect(),
+        // One of the points is a mode to the last bit.
+        None => points.iter().map(|point| at(&[*point])?.pop()).collect(),
     }
 }
 

@@ -315,6 +315,8 @@ fn ranked(shares: impl Iterator<Item = (usize, f64)>) -> Vec<(usize, f64)> {
         *share /= total;
     }
     all.retain(|(_, share)| *share > 1e-6);
-    all.sort_by(|a, b| b.1.total_cmp(&a.1).then(a.0.cmp(&b.0)));
+    // Equal shares of equal parts differ by rounding only: the first of them comes first.
+    let rank = |share: f64| (share * 1e5).round();
+    all.sort_by(|a, b| rank(b.1).total_cmp(&rank(a.1)).then(a.0.cmp(&b.0)));
     all
 }
