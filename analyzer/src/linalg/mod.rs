@@ -29,6 +29,7 @@ pub mod polish;
 mod program;
 pub mod search;
 mod selected;
+mod symmetric;
 #[cfg(test)]
 mod testing;
 mod twofold;

@@ -5,12 +5,14 @@
 //! frequencies a call. Numbers live in a [`Workspace`].
 
 use crate::linalg::dispatch::Level;
+use crate::linalg::elimination::Step;
 use crate::linalg::error::{NumericError, PlanError};
 use crate::linalg::kernel::Pass;
 use crate::linalg::markowitz::{self, BAND_THRESHOLD, POINT_THRESHOLD};
 use crate::linalg::pattern::Pattern;
 use crate::linalg::program::{FactorEntry, NONE, Program};
 use crate::linalg::selected::Selected;
+use crate::linalg::symmetric;
 use crate::linalg::values::Values;
 use crate::linalg::workspace::Workspace;
 use num_complex::Complex64;
@@ -19,6 +21,12 @@ use std::sync::{Arc, Mutex};
 /// Factor entries above which 16 lanes leave the second-level cache (1 MiB at
 /// 128 bytes an entry and 8 lanes), so that 8 lanes are faster.
 const WIDE_LIMIT: usize = 8000;
+
+/// Order above which the diagonal order is tried beside the search, and the cheaper one taken.
+const MEDIUM: usize = 700;
+
+/// Order above which the search takes seconds, so that a sound diagonal order is taken unseen.
+const LARGE: usize = 2000;
 
 /// The immutable content of a plan, shared with its workspaces.
 #[derive(Debug)]
@@ -174,10 +182,70 @@ impl Plan {
         (level, lanes): (Level, Option<usize>),
     ) -> Result<Self, PlanError> {
         check(&pattern, samples, references, wanted)?;
+        if threshold == BAND_THRESHOLD
+            && pattern.n() > MEDIUM
+            && let Some(steps) = symmetric::order(&pattern, samples, references)
+        {
+            let plan = Self::from_steps(
+                &pattern,
+                samples,
+                references,
+                wanted,
+                &steps,
+                (level, lanes),
+            );
+            let sound = plan.is_sound_for(samples, references);
+            if sound && pattern.n() > LARGE {
+                return Ok(plan);
+            }
+            if sound {
+                let steps = markowitz::search(samples, references, threshold)?;
+                let other = Self::from_steps(
+                    &pattern,
+                    samples,
+                    references,
+                    wanted,
+                    &steps,
+                    (level, lanes),
+                );
+                let cheaper = plan.multiply_adds() < other.multiply_adds();
+                return Ok(if cheaper { plan } else { other });
+            }
+        }
         let steps = markowitz::search(samples, references, threshold)?;
-        let (delay_of, delayed_parts, sloped) = survey(&pattern, samples);
-        let program = Program::new(&pattern, &steps, &delay_of);
-        let all = wanted_positions(&pattern, &program, wanted, &sloped, &delay_of);
+        Ok(Self::from_steps(
+            &pattern,
+            samples,
+            references,
+            wanted,
+            &steps,
+            (level, lanes),
+        ))
+    }
+
+    /// Whether every sample is sound at every reference.
+    fn is_sound_for(&self, samples: &[&Values], references: &[Complex64]) -> bool {
+        let mut ws = self.workspace();
+        references.chunks(self.lanes()).all(|s| {
+            samples.iter().all(|values| {
+                let factored = self.factor(values, s, &mut ws).is_ok();
+                factored && (0..s.len()).all(|lane| ws.is_sound(lane))
+            })
+        })
+    }
+
+    /// All operation lists for a pivot order.
+    fn from_steps(
+        pattern: &Arc<Pattern>,
+        samples: &[&Values],
+        references: &[Complex64],
+        wanted: &[(u32, u32)],
+        steps: &[Step],
+        (level, lanes): (Level, Option<usize>),
+    ) -> Self {
+        let (delay_of, delayed_parts, sloped) = survey(pattern, samples);
+        let program = Program::new(pattern, steps, &delay_of);
+        let all = wanted_positions(pattern, &program, wanted, &sloped, &delay_of);
         let selected = Selected::new(&program, &all);
         let lanes = lanes.unwrap_or_else(|| {
             if program.targets.len() > WIDE_LIMIT {
@@ -205,12 +273,12 @@ impl Plan {
             spares: Mutex::default(),
             program,
             selected,
-            pattern,
+            pattern: Arc::clone(pattern),
         };
         core.index();
-        Ok(Self {
+        Self {
             core: Arc::new(core),
-        })
+        }
     }
 
     /// Order of the matrix.
